@@ -1,0 +1,1 @@
+"""Heads: surfaces, cortex, landmarks, the 10-20 family of positions, regions."""

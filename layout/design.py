@@ -1,0 +1,355 @@
+"""The pipeline: from a brief to ranked, certified layouts. The only place that strings the packages together."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass, replace
+
+import numpy as np
+
+from layout import __version__
+from layout.anatomy.build import build_head
+from layout.anatomy.head import Head, Region
+from layout.anatomy.patches import cortex_patches, patches_of
+from layout.anatomy.positions import F3_CONVENTION, FAMILIES, family_names, standard_positions
+from layout.anatomy.regions import region_strengths, select_region
+from layout.anatomy.scalp_points import normals_at, project
+from layout.brief.objects import Brief
+from layout.engine.feasible import Feasible
+from layout.engine.information import Conditioned, information
+from layout.engine.model import LinearModel
+from layout.engine.ranking import PROVEN_PERCENT, Chosen, Ranking, rank_layouts
+from layout.errors import BriefError
+from layout.evidence.baselines import equal_even_spread, yardsticks
+from layout.noise.assemble import assemble_noise
+from layout.noise.calibration import Calibration, calibrate
+from layout.noise.model import NoiseModel
+from layout.noise.sensor import sensor_noise
+from layout.outputs.result import Baseline, DesignResult, RankedLayout, SensorRow
+from layout.physics.channels import candidate_channels
+from layout.physics.sphere_model import Displacements, SphereModel, fit_sphere_model
+from layout.sensing.candidates import Candidates
+from layout.sensing.lay_out import lay_candidates
+
+Progress = Callable[[str], None]
+
+
+def silent(doing: str) -> None:
+    """Progress that says nothing."""
+
+
+@dataclass(frozen=True)
+class Study:
+    """What a brief asks for, laid out on its head: everything that needs no lead field."""
+
+    brief: Brief
+    head: Head
+    standard: dict[str, np.ndarray]
+    candidates: Candidates
+    regions: tuple[Region, ...]
+    sphere: SphereModel
+    feasible: Feasible
+
+
+@dataclass(frozen=True)
+class Problem:
+    """The study as the engine's linear model, and what was assumed on the way.
+
+    target_columns: region name -> its columns of model.target.
+    """
+
+    model: LinearModel
+    target_columns: dict[str, slice]
+    calibration: Calibration
+    displacements: Displacements
+
+
+def lay_out_study(brief: Brief, progress: Progress = silent) -> Study:
+    """Head, regions, candidate sites and rules of a brief. Raises LayoutError where the brief cannot be met."""
+    progress("building the head")
+    head = build_head(brief.head)
+    regions = tuple(select_region(head, region) for region in brief.regions)
+    progress("laying the candidate sites")
+    standard = standard_positions(head.scalp, head.landmarks)
+    candidates = lay_candidates(head, brief, standard)
+    feasible = Feasible(
+        group=candidates.kind,
+        counts=np.array([entry.count for entry in brief.stock]),
+        cliques=candidates.cliques,
+        keep=_kept(brief, candidates),
+    )
+    sphere = fit_sphere_model(head, np.array(brief.head.conductivities))
+    return Study(brief, head, standard, candidates, regions, sphere, feasible)
+
+
+def _kept(brief: Brief, candidates: Candidates) -> tuple[int, ...]:
+    names = list(brief.places.keep)
+    names += [one.reference for one in brief.stock if one.kind == "electrode" and one.reference != "any"]
+    site_names = np.array(candidates.sites.names)[candidates.site]
+    kept = []
+    for name in dict.fromkeys(names):
+        here = np.flatnonzero(site_names == name)
+        if len(here) > 1:
+            raise BriefError(
+                f'places.keep must name sites that hold a single candidate, but "{name}" holds {len(here)}.'
+            )
+        kept += [int(candidate) for candidate in here]
+    return tuple(sorted(kept))
+
+
+def build_problem(study: Study, progress: Progress = silent) -> Problem:
+    """Lead fields and noise of a study, as rows for the engine."""
+    brief, head = study.brief, study.head
+    channels = candidate_channels(study.candidates)
+    progress("lead fields of the regions")
+    targets, columns, start = [], {}, 0
+    for region in study.regions:
+        field = channels.lead_field(study.sphere, head, region.members, free=region.free_orientation)
+        targets.append(_region_columns(region, field.gain, head.cortex.areas[region.members]))
+        columns[region.name] = slice(start, start + targets[-1].shape[1])
+        start += targets[-1].shape[1]
+    progress("background activity")
+    labels = _patches(study)
+    calibration = _calibrated(study, labels)
+    left_out = np.zeros(len(head.cortex), dtype=bool)
+    if not brief.noise.regions_in_background:
+        left_out[np.concatenate([region.members for region in study.regions])] = True
+    noise: NoiseModel = assemble_noise(
+        channels,
+        study.sphere,
+        head,
+        brief.noise,
+        calibration,
+        labels,
+        left_out,
+        sensor_noise(head, brief, study.candidates, study.standard),
+    )
+    target, nuisance, offset = noise.rows(np.hstack(targets))
+    model = LinearModel(target, nuisance, offset, study.candidates.candidate_of_channel)
+    return Problem(model, columns, calibration, field.displacements)
+
+
+def _region_columns(region: Region, gain: np.ndarray, areas: np.ndarray) -> np.ndarray:
+    """Response of the channels to each independent source of a region at its expected strength [V or T]."""
+    if region.coherent:
+        weight = region.moment * areas / areas.sum()
+        if gain.ndim == 2:
+            return (gain @ weight)[:, None]
+        return np.einsum("nmk,m->nk", gain, weight) / np.sqrt(3.0)
+    strength = region_strengths(areas, region.moment)
+    if gain.ndim == 2:
+        return gain * strength
+    return (gain * strength[:, None]).reshape(len(gain), -1) / np.sqrt(3.0)
+
+
+def _patches(study: Study) -> np.ndarray:
+    """Background patches, the same pieces of cortex whatever the density of the sources."""
+    head, area = study.head, study.brief.noise.patch_area
+    if study.brief.head.source_mesh == "standard":
+        return cortex_patches(head.cortex, area)
+    standard = build_head(replace(study.brief.head, source_mesh="standard")).cortex
+    return patches_of(head.cortex, standard, cortex_patches(standard, area))
+
+
+def _calibrated(study: Study, labels: np.ndarray) -> Calibration:
+    head = study.head
+    sites = {name: study.standard[name] for name in family_names("10-20") if name in study.standard}
+    normals = normals_at(head.scalp, project(head.scalp, np.array(list(sites.values()))))
+    return calibrate(head, study.sphere, study.brief.noise, labels, sites, normals)
+
+
+def design(brief: Brief, progress: Progress = silent) -> DesignResult:
+    """The main job: ranked layouts with their bounds, baselines and everything the outputs show."""
+    study = lay_out_study(brief, progress)
+    problem = build_problem(study, progress)
+    model, feasible, site = problem.model, study.feasible, study.candidates.site
+    search = brief.search
+    ranking = rank_layouts(
+        model,
+        feasible,
+        places=site,
+        ranked=search.ranked,
+        differ_by=search.differ_by or max(1, feasible.size // 8),
+        starts=search.starts,
+        seed=search.seed,
+        time_allowance=search.time_allowance,
+        progress=progress,
+    )
+    points = study.candidates.sites.positions
+    families = tuple(
+        (family, np.array([study.standard[n] for n in family_names(family) if n in study.standard]))
+        for family in FAMILIES
+    )
+    baselines = yardsticks(model, feasible, points, site, families, search.seed, progress)
+    best = ranking.layouts[0]
+    known_spreads: dict[int, float] = {}
+    layouts = []
+    for rank, layout in enumerate(ranking.layouts, 1):
+        progress(f"describing rank {rank}")
+        equal, largest = None, 0
+        if len(brief.stock) == 1:
+            equal, largest = equal_even_spread(model, feasible, points, site, layout.value, known_spreads)
+        layouts.append(_described(study, problem, layout, rank, equal, largest))
+    return DesignResult(
+        brief=brief,
+        version=__version__,
+        goal=brief.goal,
+        unit="bits",
+        layouts=tuple(layouts),
+        baselines=tuple(
+            Baseline(one.name, one.value, 100.0 * one.value / best.value, one.note, _tuple(one.chosen))
+            for one in baselines
+        ),
+        bound=best.bound,
+        root_bound=ranking.root.value,
+        weights=ranking.root.weights,
+        candidates=study.candidates,
+        head=study.head,
+        regions=study.regions,
+        notes=_notes(study, problem, ranking),
+        figures_of_noise=problem.calibration.figures(brief.noise.bandwidth),
+        stopped_by_clock=ranking.stopped_by_clock,
+        search_effort={
+            "starts": ranking.starts,
+            "swaps": ranking.swaps,
+            "bound rounds": ranking.root.rounds,
+            "differ by": ranking.differ_by,
+        },
+        audit=_audit(model, feasible, ranking),
+        proven_within=PROVEN_PERCENT,
+    )
+
+
+def _tuple(chosen: np.ndarray | None) -> tuple[int, ...] | None:
+    return None if chosen is None else tuple(int(candidate) for candidate in chosen)
+
+
+def _described(
+    study: Study, problem: Problem, layout: Chosen, rank: int, equal: int | None, largest: int
+) -> RankedLayout:
+    model, candidates = problem.model, study.candidates
+    marginal = layout.value - Conditioned(model, layout.chosen).removals()
+    reference = _reference(study, layout.chosen, marginal)
+    order = sorted(range(len(layout.chosen)), key=lambda i: (candidates.kind[layout.chosen[i]], i))
+    sensors = tuple(
+        _sensor_row(study, int(layout.chosen[i]), number, float(marginal[i]), layout.chosen[i] == reference)
+        for number, i in enumerate(order, 1)
+    )
+    per_region = {
+        name: information(_one_region(model, columns), layout.chosen)
+        for name, columns in problem.target_columns.items()
+    }
+    prices = np.array([entry.price for entry in study.brief.stock])
+    return RankedLayout(
+        rank=rank,
+        value=layout.value,
+        bound=layout.bound,
+        gap_percent=layout.gap_percent,
+        proven=layout.proven,
+        cost=float(prices[candidates.kind[layout.chosen]].sum()),
+        sensors=sensors,
+        moved=layout.moved,
+        chosen=_tuple(layout.chosen),
+        per_region_bits=per_region,
+        equals_even_spread_of=equal,
+        even_spread_limit=largest,
+    )
+
+
+def _one_region(model: LinearModel, columns: slice) -> LinearModel:
+    """The model in which one region is wanted and the others are nuisance."""
+    others = np.delete(model.target, np.arange(columns.start, columns.stop), axis=1)
+    return LinearModel(
+        model.target[:, columns],
+        np.hstack([model.nuisance, others]),
+        model.offset,
+        model.candidate_of_channel,
+    )
+
+
+def _reference(study: Study, chosen: np.ndarray, marginal: np.ndarray) -> int | None:
+    """The contact to call the reference: the brief's, else the one that matters least; any other would do."""
+    contacts = [i for i, one in enumerate(chosen) if study.brief.stock[study.candidates.kind[one]].kind == "electrode"]
+    if not contacts:
+        return None
+    named = {one.reference for one in study.brief.stock if one.kind == "electrode"} - {"any"}
+    for i in contacts:
+        if study.candidates.sites.names[study.candidates.site[chosen[i]]] in named:
+            return int(chosen[i])
+    return int(chosen[min(contacts, key=lambda i: marginal[i])])
+
+
+def _sensor_row(study: Study, candidate: int, number: int, marginal: float, is_reference: bool) -> SensorRow:
+    candidates, sites = study.candidates, study.candidates.sites
+    entry = study.brief.stock[candidates.kind[candidate]]
+    site = candidates.site[candidate]
+    rows = candidates.candidate_of_channel == candidate
+    return SensorRow(
+        number=number,
+        candidate=candidate,
+        name=candidates.names[candidate],
+        kind=entry.name,
+        kind_type=entry.kind,
+        site=sites.names[site],
+        position=candidates.positions[rows][0],
+        scalp_position=sites.positions[site],
+        axis_name=candidates.axis_name[candidate],
+        axes=candidates.axes[rows],
+        nearest_name=sites.nearest_name[site],
+        nearest_offset=float(sites.nearest_offset[site]),
+        landmark_distance=sites.landmark_distance[site],
+        arc_fractions=sites.arc_fractions[site],
+        marginal_bits=marginal,
+        role="reference" if is_reference else "",
+    )
+
+
+def _notes(study: Study, problem: Problem, ranking: Ranking) -> tuple[str, ...]:
+    brief = study.brief
+    notes = [*study.candidates.notes, *study.head.notes]
+    if study.head.sphere is None:
+        notes.append(f"Quick physical model: layered spheres, {problem.displacements.summary()}.")
+    notes.append(
+        f"Ranked layouts differ from each other by at least {ranking.differ_by} sensors; a rank's bound covers all "
+        "layouts that differ by as much from every earlier rank, among these candidates and under this model."
+    )
+    notes.append(
+        "Bits depend on the assumed strengths ("
+        + ", ".join(
+            f"{region.name} {one.moment * 1e9:g} nAm" for region, one in zip(study.regions, brief.regions, strict=True)
+        )
+        + "); compare layouts by ratios."
+    )
+    if any(entry.kind == "electrode" for entry in brief.stock):
+        notes.append(
+            "The reference is one of the counted electrodes; calling another one the reference changes nothing, and "
+            "the ground is not counted."
+        )
+    notes.append(f"Standard positions: {F3_CONVENTION}.")
+    return tuple(notes)
+
+
+def _audit(model: LinearModel, feasible: Feasible, ranking: Ranking) -> dict[str, np.ndarray]:
+    """What a stranger needs to recompute every value and the root bound."""
+    chosen = np.full((len(ranking.layouts), feasible.size), -1)
+    for row, layout in enumerate(ranking.layouts):
+        chosen[row, : len(layout.chosen)] = layout.chosen
+    return {
+        "target": model.target,
+        "nuisance": model.nuisance,
+        "offset": model.offset,
+        "candidate_of_channel": model.candidate_of_channel,
+        "conflicts": np.argwhere(np.triu(feasible.conflicts)),
+        "group": feasible.group,
+        "counts": feasible.counts,
+        "keep": np.array(feasible.keep, dtype=int),
+        "clique_members": np.concatenate([*feasible.cliques, np.zeros(0, dtype=int)]).astype(int),
+        "clique_starts": np.cumsum([0, *(len(clique) for clique in feasible.cliques)]),
+        "chosen": chosen,
+        "weights": ranking.root.weights,
+        "values": np.array([layout.value for layout in ranking.layouts]),
+        "bounds": np.array([layout.bound for layout in ranking.layouts]),
+        "root_bound": np.array(ranking.root.value),
+        "bound": np.array(ranking.layouts[0].bound),
+        "schema": np.array(1),
+    }

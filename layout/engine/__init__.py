@@ -1,0 +1,1 @@
+"""Optimal choice from candidates: arrays in, arrays out. Knows nothing about heads."""

@@ -1,0 +1,1 @@
+"""What choosing buys: baselines and comparisons for a chosen layout."""

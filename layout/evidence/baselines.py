@@ -1,0 +1,152 @@
+"""What a layout gives without a search, at the same count: the yardsticks beside every chosen layout."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass, replace
+
+import numpy as np
+from scipy.spatial import cKDTree
+
+from layout.engine.feasible import Feasible
+from layout.engine.information import information
+from layout.engine.model import LinearModel
+from layout.engine.search import random_set
+from layout.evidence.spread import even_spread
+from layout.units import MM
+
+RANDOM_LAYOUTS = 200
+NEAR = 12 * MM  # a standard position farther than this from every site is not available
+
+
+@dataclass(frozen=True)
+class Yardstick:
+    """name; value [bits]; chosen candidates, None where there is no single layout; note: what to know about it."""
+
+    name: str
+    value: float
+    chosen: np.ndarray | None
+    note: str = ""
+
+
+def first_at_site(site: np.ndarray, kind: np.ndarray, entry: int) -> tuple[np.ndarray, np.ndarray]:
+    """(sites, candidates) of one stock entry: every site it can use and its first candidate there (the normal axis)."""
+    members = np.flatnonzero(kind == entry)
+    sites, first = np.unique(site[members], return_index=True)
+    return sites, members[first]
+
+
+def evenly(points: np.ndarray, site: np.ndarray, feasible: Feasible, counts: np.ndarray) -> np.ndarray:
+    """Candidates of an even spread of counts[g] sensors of each stock entry g; sites' points (n_sites, 3) [m]."""
+    picked = []
+    for entry, count in enumerate(counts):
+        sites, candidates = first_at_site(site, feasible.group, entry)
+        fixed = np.flatnonzero(np.isin(sites, site[list(feasible.keep)]))[:count]
+        picked.append(candidates[even_spread(points[sites], int(count), fixed)])
+    return np.concatenate(picked)
+
+
+def equal_even_spread(
+    model: LinearModel,
+    feasible: Feasible,
+    points: np.ndarray,
+    site: np.ndarray,
+    value: float,
+    cache: dict[int, float],
+) -> tuple[int | None, int]:
+    """(n, largest): the count at which an even spread reaches `value` [bits], found by bisection; None if none does.
+
+    For a stock of one entry; `largest` is the number of its sites. cache: values of spreads already computed.
+    """
+    largest = len(np.unique(site))
+
+    def spread_value(count: int) -> float:
+        if count not in cache:
+            cache[count] = information(model, evenly(points, site, feasible, np.array([count])))
+        return cache[count]
+
+    low, high = feasible.size - 1, largest
+    if spread_value(largest) < value:
+        return None, largest
+    while high - low > 1:
+        middle = (low + high) // 2
+        if spread_value(middle) >= value:
+            high = middle
+        else:
+            low = middle
+    return high, largest
+
+
+def standard_subset(
+    points: np.ndarray,
+    site: np.ndarray,
+    feasible: Feasible,
+    families: tuple[tuple[str, np.ndarray], ...],
+) -> tuple[np.ndarray | None, str]:
+    """Candidates at standard positions: the 10-20 ones first, thinned evenly, then 10-10, then 10-5.
+
+    families: (name, positions (n, 3) [m]) from coarse to fine. Positions without an allowed site within 12 mm are
+    left out. Returns (candidates or None when there are too few, a note).
+    """
+    picked = []
+    finest = families[0][0]
+    for entry, count in enumerate(feasible.counts):
+        sites, candidates = first_at_site(site, feasible.group, entry)
+        chosen = np.flatnonzero(np.isin(sites, site[list(feasible.keep)]))[:count]
+        tree = cKDTree(points[sites])
+        for name, positions in families:
+            if len(chosen) == count:
+                break
+            away, nearest = tree.query(positions)
+            pool = np.unique(np.concatenate([chosen, nearest[away <= NEAR]]))
+            take = min(int(count), len(pool))
+            fixed = np.searchsorted(pool, chosen)
+            chosen = pool[even_spread(points[sites][pool], take, fixed)]
+            finest = max(finest, name, key=[family for family, _ in families].index)
+        if len(chosen) < count:
+            return None, f"only {len(chosen)} standard positions have an allowed site"
+        picked.append(candidates[chosen])
+    return np.concatenate(picked), f"{finest} positions"
+
+
+def best_singles(model: LinearModel, feasible: Feasible) -> np.ndarray:
+    """The candidates that carry most on their own, taken from the top as far as the rules allow.
+
+    A single electrode against an unknown reference carries nothing, so singles are ranked as if the reference were
+    known.
+    """
+    known = replace(model, offset=np.zeros_like(model.offset))
+    alone = np.array([information(known, np.array([candidate])) for candidate in range(model.n_candidates)])
+    chosen = np.array(sorted(feasible.keep), dtype=int)
+    while len(chosen) < feasible.size:
+        allowed = feasible.addable(chosen)
+        if not allowed.any():
+            return feasible.any_set(alone)
+        chosen = np.append(chosen, int(np.argmax(np.where(allowed, alone, -np.inf))))
+    return chosen
+
+
+def yardsticks(
+    model: LinearModel,
+    feasible: Feasible,
+    points: np.ndarray,
+    site: np.ndarray,
+    families: tuple[tuple[str, np.ndarray], ...],
+    seed: int,
+    progress: Callable[[str], None] = lambda doing: None,
+) -> tuple[Yardstick, ...]:
+    """Even spread, standard positions, best single channels, median of 200 random layouts, at the same counts."""
+    progress("baselines")
+
+    def of(name: str, chosen: np.ndarray, note: str = "") -> Yardstick:
+        broken = "" if feasible.allows(chosen) else "breaks a rule of the brief, shown all the same"
+        return Yardstick(name, information(model, chosen), chosen, ", ".join(filter(None, [note, broken])))
+
+    even = of("even spread", evenly(points, site, feasible, feasible.counts))
+    chosen, note = standard_subset(points, site, feasible, families)
+    standard = () if chosen is None else (of("standard positions", chosen, note),)
+    singles = of("best single channels", best_singles(model, feasible))
+    rng = np.random.default_rng([seed, RANDOM_LAYOUTS])
+    draws = [information(model, random_set(feasible, rng)) for _ in range(RANDOM_LAYOUTS)]
+    random = Yardstick("random", float(np.median(draws)), None, f"median of {RANDOM_LAYOUTS}")
+    return (even, *standard, singles, random)

@@ -1,0 +1,1 @@
+"""Noise: sensors, background brain, eyes, surroundings."""

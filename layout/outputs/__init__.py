@@ -1,0 +1,1 @@
+"""Tables, files and pictures made from a result."""

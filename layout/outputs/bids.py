@@ -1,0 +1,57 @@
+"""The electrodes of one layout as a pair of BIDS files (Brain Imaging Data Structure 1.11, EEG)."""
+
+from __future__ import annotations
+
+import json
+
+from layout.outputs.plain import fixed, for_json, one_line
+from layout.outputs.result import DesignResult, RankedLayout, SensorRow
+from layout.units import MM
+
+ELECTRODES_TSV = "sub-plan_electrodes.tsv"
+COORDSYSTEM_JSON = "sub-plan_coordsystem.json"
+
+FRAME = (
+    "RAS orientation: origin halfway between LPA and RPA, +x towards RPA, +z upward along the normal of the "
+    "plane of LPA, RPA and NAS, +y = z × x, towards the front. Planned positions on the scalp, not measured."
+)
+
+
+def electrodes_of(layout: RankedLayout) -> tuple[SensorRow, ...]:
+    """The electrodes of the layout, the reference contact among them, in placing order."""
+    return tuple(row for row in layout.sensors if row.kind_type == "electrode")
+
+
+def electrodes_tsv(layout: RankedLayout) -> str:
+    """Columns name, x, y, z [mm] and the three recommended ones, which a plan cannot know (n/a).
+
+    `name` is the index of the file: the site's name, or the candidate's where two electrodes share a site's
+    name.
+    """
+    rows = electrodes_of(layout)
+    labels = [one_line(row.site) for row in rows]
+    if len(set(labels)) < len(labels):
+        labels = [one_line(row.name) for row in rows]
+    lines = ["name\tx\ty\tz\ttype\tmaterial\timpedance"]
+    for label, row in zip(labels, rows, strict=True):
+        place = [fixed(value / MM, 2, missing="n/a") for value in row.position]
+        lines.append("\t".join([label or "n/a", *place, "n/a", "n/a", "n/a"]))
+    return "\n".join(lines) + "\n"
+
+
+def coordsystem_json(result: DesignResult) -> str:
+    """The frame, unit and landmarks that belong to `electrodes_tsv`."""
+    marks = result.head.landmarks
+    landmarks = {"NAS": marks.nas, "LPA": marks.lpa, "RPA": marks.rpa}
+    content = {
+        "EEGCoordinateSystem": "Other",
+        "EEGCoordinateUnits": "mm",
+        "EEGCoordinateSystemDescription": FRAME,
+        "AnatomicalLandmarkCoordinates": {
+            name: [round(float(value) / MM, 2) + 0.0 for value in point] for name, point in landmarks.items()
+        },
+        "AnatomicalLandmarkCoordinateSystem": "Other",
+        "AnatomicalLandmarkCoordinateUnits": "mm",
+        "AnatomicalLandmarkCoordinateSystemDescription": FRAME,
+    }
+    return json.dumps(for_json(content), indent=2, ensure_ascii=False) + "\n"

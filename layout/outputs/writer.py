@@ -1,0 +1,167 @@
+"""Writes the output folder: everything into a hidden sibling first, then one rename. The one place that opens
+files."""
+
+from __future__ import annotations
+
+import contextlib
+import json
+import os
+import re
+import secrets
+import shutil
+from collections.abc import Callable
+from pathlib import Path
+
+from layout.errors import FileError
+from layout.outputs.bids import (
+    COORDSYSTEM_JSON,
+    ELECTRODES_TSV,
+    coordsystem_json,
+    electrodes_of,
+    electrodes_tsv,
+)
+from layout.outputs.figure import Picture, scalp_pictures
+from layout.outputs.ranking import ranking_json
+from layout.outputs.report import report_html
+from layout.outputs.result import DesignResult, RankedLayout
+from layout.outputs.tables import ranking_csv, sensors_csv
+
+RANKING = "ranking.json"
+AUDIT = "audit.npz"
+Pictures = tuple[Picture, ...]
+
+TOP_FILES: dict[str, Callable[[DesignResult, Pictures], str | bytes]] = {
+    RANKING: lambda result, pictures: ranking_json(result),
+    "ranking.csv": lambda result, pictures: ranking_csv(result),
+    "report.html": report_html,
+}
+LAYOUT_FILES: dict[str, Callable[[RankedLayout, Picture], str | bytes]] = {
+    "sensors.csv": lambda layout, picture: sensors_csv(layout),
+    "scalp.png": lambda layout, picture: picture.png,
+    "scalp.svg": lambda layout, picture: picture.svg,
+}
+ELECTRODE_FILES: dict[str, Callable[[DesignResult, RankedLayout], str | bytes]] = {
+    ELECTRODES_TSV: lambda result, layout: electrodes_tsv(layout),
+    COORDSYSTEM_JSON: lambda result, layout: coordsystem_json(result),
+}
+
+
+def write_result(result: DesignResult, out_dir: str | os.PathLike, audit: bool = False) -> Path:
+    """Write every file of `result` to `out_dir` (made, or replaced if it is an earlier output) and return its
+    path.
+
+    On any exception, Ctrl-C included, nothing is left behind and an earlier output stays as it was. Raises
+    FileError where `check_out_dir` does and where the system refuses to write.
+    """
+    out = check_out_dir(out_dir)
+    fresh = out.parent / f".{out.name}-{secrets.token_hex(4)}.partial"
+    made: list[Path] = []
+    try:
+        _make_parents(out.parent, made)
+        fresh.mkdir()
+        _fill(fresh, result, audit)
+        _put_in_place(fresh, out)
+    except BaseException as problem:
+        shutil.rmtree(fresh, ignore_errors=True)
+        for folder in reversed(made):
+            with contextlib.suppress(OSError):  # someone else has put something there meanwhile
+                folder.rmdir()
+        if isinstance(problem, OSError):
+            reason = problem.strerror or str(problem)
+            raise FileError(f"the output folder {str(out)!r} cannot be written: {reason}") from problem
+        raise
+    return out
+
+
+def check_out_dir(out_dir: str | os.PathLike) -> Path:
+    """The absolute path of `out_dir` if it can take an output: new, empty, or nothing but an earlier output.
+
+    Ask before a long computation, so that no work is lost. Raises FileError with the rule that is broken.
+    """
+    out = Path(out_dir).resolve()
+    name = str(out_dir)
+    if Path.cwd().is_relative_to(out):
+        raise FileError(f"the output folder {name!r} must not be the current folder or one above it")
+    if not out.exists():
+        return out
+    if not out.is_dir():
+        raise FileError(f"the output folder {name!r} is a file: name a new folder or one from an earlier run")
+    entries = sorted(path for path in out.rglob("*") if not path.is_dir() or path.is_symlink())
+    if not entries and not any(out.iterdir()):
+        return out
+    if not _is_earlier_output(out):
+        raise FileError(
+            f"the output folder {name!r} holds something else: it must be new, empty or from an earlier run"
+        )
+    for path in entries:
+        if not _is_our_file(path.relative_to(out)):
+            raise FileError(
+                f"the output folder {name!r} must hold only what an earlier run wrote, and it also holds "
+                f"{str(path.relative_to(out))!r}"
+            )
+    return out
+
+
+def _is_earlier_output(folder: Path) -> bool:
+    try:
+        content = json.loads((folder / RANKING).read_text(encoding="utf-8"))
+    except (OSError, ValueError):
+        return False
+    return isinstance(content, dict) and isinstance(content.get("schema"), int) and "layouts" in content
+
+
+def _is_our_file(path: Path) -> bool:
+    if len(path.parts) == 1:
+        return path.name in TOP_FILES or path.name == AUDIT
+    known = path.name in LAYOUT_FILES or path.name in ELECTRODE_FILES
+    return len(path.parts) == 2 and known and re.fullmatch(r"layout-\d+", path.parts[0]) is not None
+
+
+def _make_parents(folder: Path, made: list[Path]) -> None:
+    """Make `folder` and what is missing above it; each new one is appended to `made`, outermost first."""
+    missing = [place for place in (folder, *folder.parents) if not place.exists()]
+    for place in reversed(missing):
+        place.mkdir()
+        made.append(place)
+
+
+def _fill(folder: Path, result: DesignResult, audit: bool) -> None:
+    pictures = scalp_pictures(result)
+    for name, export in TOP_FILES.items():
+        _write(folder / name, export(result, pictures))
+    if audit:
+        _write_audit(folder / AUDIT, result)
+    for layout, picture in zip(result.layouts, pictures, strict=True):
+        place = folder / f"layout-{layout.rank}"
+        place.mkdir()
+        for name, export in LAYOUT_FILES.items():
+            _write(place / name, export(layout, picture))
+        if electrodes_of(layout):
+            for name, export in ELECTRODE_FILES.items():
+                _write(place / name, export(result, layout))
+
+
+def _write(path: Path, content: str | bytes) -> None:
+    path.write_bytes(content.encode("utf-8") if isinstance(content, str) else content)
+
+
+def _write_audit(path: Path, result: DesignResult) -> None:
+    import numpy as np
+
+    np.savez_compressed(path, **{name: result.audit[name] for name in sorted(result.audit)})
+
+
+def _put_in_place(fresh: Path, out: Path) -> None:
+    """Rename `fresh` to `out`; an earlier output steps aside first and comes back if that fails."""
+    if not out.exists():
+        fresh.rename(out)
+        return
+    old = fresh.with_suffix(".old")
+    try:
+        out.rename(old)
+        fresh.rename(out)
+    except BaseException:
+        if old.exists() and not out.exists():
+            old.rename(out)
+        raise
+    shutil.rmtree(old, ignore_errors=True)

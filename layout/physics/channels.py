@@ -1,0 +1,65 @@
+"""Channels on a head and their lead field, in the form that noise and design ask for."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from layout.anatomy.head import Head
+from layout.physics.lead_field import LeadField, compute_lead_field, eye_field
+from layout.physics.sphere_model import SphereModel
+from layout.sensing.candidates import Candidates
+
+
+@dataclass(frozen=True)
+class Channels:
+    """n channels in the head frame: positions (n, 3) [m], unit axes (n, 3) (zeros: electrodes), is_electrode (n,),
+    normals (n, 3) of the scalp at their site."""
+
+    positions: np.ndarray
+    axes: np.ndarray
+    is_electrode: np.ndarray
+    normals: np.ndarray
+
+    def __len__(self) -> int:
+        return len(self.positions)
+
+    def part(self, rows: slice) -> Channels:
+        """Some of the channels."""
+        return Channels(self.positions[rows], self.axes[rows], self.is_electrode[rows], self.normals[rows])
+
+    def lead_field(self, sphere: SphereModel, head: Head, sources: np.ndarray, free: bool) -> LeadField:
+        """Lead field to the numbered sources of the head's cortex, along their normals or free."""
+        normals = None if free else head.cortex.normals[sources]
+        return compute_lead_field(
+            sphere,
+            head,
+            self.positions,
+            self.axes,
+            self.is_electrode,
+            self.normals,
+            head.cortex.positions[sources],
+            normals,
+        )
+
+    def eye_gain(self, sphere: SphereModel, head: Head) -> np.ndarray:
+        """Gain (n, 2, 3) [V or T per A·m] to a free dipole at each eye."""
+        return eye_field(sphere, head, self.positions, self.axes, self.is_electrode, self.normals)
+
+
+def candidate_channels(candidates: Candidates) -> Channels:
+    """The channels of all candidates."""
+    normals = candidates.sites.normals[candidates.site[candidates.candidate_of_channel]]
+    return Channels(candidates.positions, candidates.axes, candidates.is_electrode, normals)
+
+
+def electrodes_at(positions: np.ndarray) -> Channels:
+    """One electrode at each scalp point (n, 3) [m]."""
+    nothing = np.zeros_like(positions)
+    return Channels(positions, nothing, np.ones(len(positions), dtype=bool), nothing)
+
+
+def normal_magnetometers_above(positions: np.ndarray, normals: np.ndarray, gap: float) -> Channels:
+    """One magnetometer along the scalp normal, `gap` [m] above each scalp point (n, 3) [m]."""
+    return Channels(positions + gap * normals, normals, np.zeros(len(positions), dtype=bool), normals)

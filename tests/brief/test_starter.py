@@ -1,0 +1,59 @@
+"""The starter briefs load, explain every key, and show the true defaults."""
+
+import dataclasses
+import re
+
+import pytest
+
+from layout.brief import schema
+from layout.brief.starter import STARTER_KINDS, starter_brief
+from layout.errors import BriefError
+
+COMMENTED_KEY = re.compile(r"^# (?=[a-z_0-9]+ = )", re.MULTILINE)
+
+
+def test_starters_ask_for_what_their_users_have(load_text):
+    sensors = {kind: [(s.kind, s.count) for s in load_text(starter_brief(kind)).stock] for kind in STARTER_KINDS}
+    assert sensors == {
+        "cap": [("electrode", 24)],
+        "helmet": [("magnetometer", 20)],
+        "budget": [("electrode", 8)],
+    }
+
+
+@pytest.mark.parametrize("kind", STARTER_KINDS)
+def test_taking_the_comment_sign_away_changes_nothing(load_text, kind):
+    """Every default a starter shows is the default that holds, to the last digit."""
+    text = starter_brief(kind)
+    as_given = load_text(text)
+    full, n = COMMENTED_KEY.subn("", text)
+    assert n > 20
+    assert dataclasses.replace(load_text(full), sha256=as_given.sha256) == as_given
+
+
+@pytest.mark.parametrize("kind", STARTER_KINDS)
+def test_starter_explains_every_key_it_could_use(kind):
+    text = starter_brief(kind)
+    sensor = schema.MagnetometerForm if kind == "helmet" else schema.ElectrodeForm
+    other = {schema.MagnetometerForm, schema.ElectrodeForm} - {sensor}
+    forms = [f for f in (*schema.Form.__subclasses__(), *schema.StockForm.__subclasses__()) if f not in other]
+    keys = {field.alias or key for form in forms for key, field in form.model_fields.items()}
+    if kind != "helmet":
+        keys -= {"slots_csv"}
+    missing = {key for key in keys if not re.search(rf"\b{key}\b", text)}
+    assert not missing
+
+
+@pytest.mark.parametrize("kind", STARTER_KINDS)
+def test_starter_is_a_plain_text_that_prints_well(kind):
+    text = starter_brief(kind)
+    assert text.isascii()
+    assert max(map(len, text.splitlines())) <= 110
+    assert text.endswith("\n")
+    assert not text.endswith("\n\n")
+    assert "\n\n\n" not in text
+
+
+def test_unknown_kind_of_starter():
+    with pytest.raises(BriefError, match=r'"cap", "helmet", "budget", but "hat" was given\.$'):
+        starter_brief("hat")

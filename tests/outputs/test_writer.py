@@ -1,0 +1,188 @@
+"""The output folder: complete or not there, and never over someone else's files."""
+
+import dataclasses
+import json
+import zipfile
+
+import numpy as np
+import pytest
+from conftest import make_result
+
+from layout.errors import FileError
+from layout.outputs import writer
+from layout.outputs.figure import Picture
+from layout.outputs.writer import check_out_dir, write_result
+
+
+@pytest.fixture(autouse=True)
+def _drawn_once(monkeypatch):
+    """The pictures have their own tests; here only that they arrive."""
+    stub = lambda result: tuple(Picture(b"png%d" % k.rank, b"svg%d" % k.rank) for k in result.layouts)  # noqa: E731
+    monkeypatch.setattr(writer, "scalp_pictures", stub)
+
+
+def _files(folder):
+    return {str(path.relative_to(folder)): path.read_bytes() for path in folder.rglob("*") if path.is_file()}
+
+
+def _everything(folder):
+    return sorted(str(path.relative_to(folder)) for path in folder.rglob("*"))
+
+
+TOP = {"ranking.json", "ranking.csv", "report.html"}
+EACH = {"sensors.csv", "scalp.png", "scalp.svg"}
+BIDS = {"sub-plan_electrodes.tsv", "sub-plan_coordsystem.json"}
+
+
+def test_all_files_are_there(result, tmp_path):
+    out = write_result(result, tmp_path / "deep" / "out")
+    files = _files(out)
+    assert set(files) == TOP | {f"layout-{rank}/{name}" for rank in (1, 2, 3) for name in EACH | BIDS}
+    assert files["layout-2/scalp.png"] == b"png2"
+    assert files["layout-3/scalp.svg"] == b"svg3"
+    assert _everything(tmp_path / "deep")[0] == "out"  # no hidden sibling is left
+    assert sum(path.startswith(".") for path in _everything(tmp_path / "deep")) == 0
+
+
+def test_no_electrodes_no_electrode_files(magnetometers_only, tmp_path):
+    files = _files(write_result(magnetometers_only, tmp_path / "out"))
+    assert {f"layout-1/{name}" for name in EACH} == {name for name in files if name.startswith("layout-1/")}
+
+
+def test_same_result_same_bytes(tmp_path):
+    first = _files(write_result(make_result(), tmp_path / "a", audit=True))
+    second = _files(write_result(make_result(), tmp_path / "b", audit=True))
+    assert first == second
+
+
+def test_audit_only_when_asked_and_readable(result, tmp_path):
+    assert "audit.npz" not in _files(write_result(result, tmp_path / "without"))
+    out = write_result(result, tmp_path / "with", audit=True)
+    with np.load(out / "audit.npz") as arrays:
+        assert set(arrays) == set(result.audit)
+        np.testing.assert_array_equal(arrays["target"], result.audit["target"])
+    assert {entry.date_time[0] for entry in zipfile.ZipFile(out / "audit.npz").infolist()} == {1980}  # no clock
+
+
+@pytest.mark.parametrize("problem", [RuntimeError("boom"), KeyboardInterrupt(), OSError(28, "No space left")])
+def test_nothing_half_written(result, tmp_path, monkeypatch, problem):
+    def fail(layout, picture):
+        if layout.rank == 2:
+            raise problem
+        return "fine"
+
+    monkeypatch.setitem(writer.LAYOUT_FILES, "sensors.csv", fail)
+    expected = FileError if isinstance(problem, OSError) else type(problem)
+    with pytest.raises(expected):
+        write_result(result, tmp_path / "new" / "deep" / "out")
+    assert _everything(tmp_path) == []
+
+
+def test_an_earlier_output_survives_a_failure(result, tmp_path, monkeypatch):
+    out = write_result(result, tmp_path / "out")
+    before = _files(tmp_path)
+
+    def fail(result, pictures):
+        raise KeyboardInterrupt
+
+    monkeypatch.setitem(writer.TOP_FILES, "report.html", fail)
+    with pytest.raises(KeyboardInterrupt):
+        write_result(result, out)
+    assert _files(tmp_path) == before
+
+
+def test_an_earlier_output_comes_back_if_the_last_rename_fails(result, tmp_path, monkeypatch):
+    out = write_result(result, tmp_path / "out")
+    before = _files(tmp_path)
+    rename = type(out).rename
+
+    def refuse(self, target):
+        if self.name.endswith(".partial"):
+            raise OSError(5, "Input/output error")
+        return rename(self, target)
+
+    monkeypatch.setattr(type(out), "rename", refuse)
+    with pytest.raises(FileError, match="Input/output error"):
+        write_result(result, out)
+    assert _files(tmp_path) == before
+
+
+def test_an_earlier_output_is_replaced_whole(result, tmp_path):
+    out = write_result(result, tmp_path / "out", audit=True)
+    fewer = dataclasses.replace(result, layouts=result.layouts[:1])
+    assert write_result(fewer, out) == out
+    assert "layout-2/sensors.csv" not in _files(out)
+    assert "audit.npz" not in _files(out)
+    assert len(json.loads((out / "ranking.json").read_text(encoding="utf-8"))["layouts"]) == 1
+    assert [path.name for path in tmp_path.iterdir()] == ["out"]
+
+
+def test_an_empty_folder_is_taken(result, tmp_path):
+    (tmp_path / "out").mkdir()
+    assert "ranking.json" in _files(write_result(result, tmp_path / "out"))
+
+
+def _foreign_folder(out, result):
+    out.mkdir()
+    (out / "thesis.txt").write_text("mine")
+
+
+def _foreign_ranking(out, result):
+    out.mkdir()
+    (out / "ranking.json").write_text('{"teams": ["A", "B"]}')
+
+
+def _broken_ranking(out, result):
+    out.mkdir()
+    (out / "ranking.json").write_text("{")
+
+
+def _own_notes_inside(out, result):
+    write_result(result, out)
+    (out / "layout-1" / "notes.md").write_text("measured on Monday")
+
+
+def _a_file(out, result):
+    out.write_text("a file")
+
+
+def _folders_only(out, result):
+    (out / "kept" / "empty").mkdir(parents=True)
+
+
+@pytest.mark.parametrize(
+    ("prepare", "rule"),
+    [
+        (_foreign_folder, "holds something else"),
+        (_foreign_ranking, "holds something else"),
+        (_broken_ranking, "holds something else"),
+        (_own_notes_inside, r"also holds 'layout-1/notes\.md'"),
+        (_a_file, "is a file"),
+        (_folders_only, "holds something else"),
+    ],
+)
+def test_other_peoples_files_are_refused_and_untouched(result, tmp_path, prepare, rule):
+    out = tmp_path / "out"
+    prepare(out, result)
+    before, listed = _files(tmp_path), _everything(tmp_path)
+    with pytest.raises(FileError, match=rule) as refusal:
+        write_result(result, out)
+    assert "\n" not in str(refusal.value)
+    assert _files(tmp_path) == before
+    assert _everything(tmp_path) == listed
+
+
+def test_the_current_folder_is_refused(result, tmp_path, monkeypatch):
+    (tmp_path / "here" / "below").mkdir(parents=True)
+    monkeypatch.chdir(tmp_path / "here" / "below")
+    for name in (".", ".."):
+        with pytest.raises(FileError, match="current folder"):
+            check_out_dir(name)
+    assert check_out_dir("out") == tmp_path / "here" / "below" / "out"
+
+
+def test_a_folder_under_a_file_is_one_sentence(result, tmp_path):
+    (tmp_path / "file").write_text("x")
+    with pytest.raises(FileError, match="cannot be written"):
+        write_result(result, tmp_path / "file" / "out")
+    assert _everything(tmp_path) == ["file"]

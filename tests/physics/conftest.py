@@ -1,0 +1,62 @@
+"""Small heads made of icospheres, and finite differences."""
+
+import numpy as np
+import pytest
+import trimesh
+
+from layout.anatomy.head import Head, Landmarks, Sources, Surface
+
+
+def make_head(semi_axes, centre, sphere=None, subdivisions=4, gaps=(6e-3, 7e-3)) -> Head:
+    """An ellipsoidal inner skull with outer skull and scalp pushed out along its normals."""
+    ball = trimesh.creation.icosphere(subdivisions=subdivisions)
+    inner = Surface(ball.vertices * semi_axes + centre, ball.faces)
+    outward = (ball.vertices / semi_axes) / np.linalg.norm(ball.vertices / semi_axes, axis=1, keepdims=True)
+    outer = Surface(inner.vertices + gaps[0] * outward, ball.faces)
+    scalp = Surface(outer.vertices + gaps[1] * outward, ball.faces)
+    cortex_points = 0.9 * ball.vertices * semi_axes + centre
+    n = len(cortex_points)
+    front = np.array([0, semi_axes[1] + sum(gaps), 0])
+    return Head(
+        name="test",
+        scalp=scalp,
+        outer_skull=outer,
+        inner_skull=inner,
+        landmarks=Landmarks(front, np.array([-0.08, 0, 0]), np.array([0.08, 0, 0]), -front),
+        cortex=Sources(cortex_points, outward, np.full(n, 1e-6), np.sign(cortex_points[:, 0]), ball.faces),
+        eyes=centre + np.array([[-0.03, 0.07, -0.03], [0.03, 0.07, -0.03]]),
+        sphere=sphere,
+    )
+
+
+@pytest.fixture(scope="session")
+def ellipsoid_head() -> Head:
+    return make_head(np.array([0.068, 0.084, 0.072]), np.array([0.001, 0.004, 0.04]))
+
+
+@pytest.fixture(scope="session")
+def round_head() -> Head:
+    """Exact spheres given only as surfaces."""
+    return make_head(np.full(3, 0.08), np.array([0.002, -0.003, 0.045]))
+
+
+@pytest.fixture(scope="session")
+def sphere_head() -> Head:
+    """The same spheres, declared."""
+    centre = np.array([0.002, -0.003, 0.045])
+    return make_head(np.full(3, 0.08), centre, sphere=(centre, np.array([0.08, 0.086, 0.093])))
+
+
+@pytest.fixture(scope="session")
+def jacobian():
+    """Fourth-order central differences: d function(point) / d point, point (3,) -> (..., 3)."""
+
+    def differentiate(function, point, step):
+        columns = []
+        for axis in np.eye(3):
+            near = function(point + step * axis) - function(point - step * axis)
+            far = function(point + 2 * step * axis) - function(point - 2 * step * axis)
+            columns.append((8 * near - far) / (12 * step))
+        return np.stack(columns, axis=-1)
+
+    return differentiate
