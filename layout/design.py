@@ -19,17 +19,20 @@ from layout.engine.feasible import Feasible
 from layout.engine.information import Conditioned, information
 from layout.engine.model import LinearModel
 from layout.engine.ranking import PROVEN_PERCENT, Chosen, Ranking, rank_layouts
-from layout.errors import BriefError
+from layout.errors import InfeasibleError
 from layout.evidence.baselines import equal_even_spread, yardsticks
 from layout.noise.assemble import assemble_noise
 from layout.noise.calibration import Calibration, calibrate
 from layout.noise.model import NoiseModel
 from layout.noise.sensor import sensor_noise
+from layout.outputs.check import Check
 from layout.outputs.result import Baseline, DesignResult, RankedLayout, SensorRow
 from layout.physics.channels import candidate_channels
 from layout.physics.sphere_model import Displacements, SphereModel, fit_sphere_model
 from layout.sensing.candidates import Candidates
+from layout.sensing.kept import kept_candidates, named_reference
 from layout.sensing.lay_out import lay_candidates
+from layout.units import MM
 
 Progress = Callable[[str], None]
 
@@ -76,25 +79,23 @@ def lay_out_study(brief: Brief, progress: Progress = silent) -> Study:
         group=candidates.kind,
         counts=np.array([entry.count for entry in brief.stock]),
         cliques=candidates.cliques,
-        keep=_kept(brief, candidates),
+        keep=kept_candidates(brief, candidates),
     )
+    _check_room(brief, feasible)
     sphere = fit_sphere_model(head, np.array(brief.head.conductivities))
     return Study(brief, head, standard, candidates, regions, sphere, feasible)
 
 
-def _kept(brief: Brief, candidates: Candidates) -> tuple[int, ...]:
-    names = list(brief.places.keep)
-    names += [one.reference for one in brief.stock if one.kind == "electrode" and one.reference != "any"]
-    site_names = np.array(candidates.sites.names)[candidates.site]
-    kept = []
-    for name in dict.fromkeys(names):
-        here = np.flatnonzero(site_names == name)
-        if len(here) > 1:
-            raise BriefError(
-                f'places.keep must name sites that hold a single candidate, but "{name}" holds {len(here)}.'
-            )
-        kept += [int(candidate) for candidate in here]
-    return tuple(sorted(kept))
+def _check_room(brief: Brief, feasible: Feasible) -> None:
+    try:
+        feasible.any_set(np.zeros(feasible.n_candidates))
+    except InfeasibleError:
+        counts = ", ".join(str(entry.count) for entry in brief.stock)
+        spacings = ", ".join(f"{entry.spacing / MM:g}" for entry in brief.stock)
+        raise InfeasibleError(
+            "stock.count: must leave room for all sensors on the allowed sites under spacing_mm and places.keep, but "
+            f"{counts} with a spacing_mm of {spacings} was given"
+        ) from None
 
 
 def build_problem(study: Study, progress: Progress = silent) -> Problem:
@@ -126,7 +127,27 @@ def build_problem(study: Study, progress: Progress = silent) -> Problem:
     )
     target, nuisance, offset = noise.rows(np.hstack(targets))
     model = LinearModel(target, nuisance, offset, study.candidates.candidate_of_channel)
-    return Problem(model, columns, calibration, field.displacements)
+    return Problem(model, columns, calibration, channels.displacements(study.sphere, head))
+
+
+def examine(brief: Brief, progress: Progress = silent) -> Check:
+    """What a design of this brief would work on, without a search."""
+    study = lay_out_study(brief, progress)
+    progress("background activity")
+    calibration = _calibrated(study, _patches(study))
+    return Check(
+        brief=brief,
+        head=study.head,
+        standard=study.standard,
+        regions=study.regions,
+        candidates=study.candidates,
+        conflicts=study.feasible.conflicts,
+        kept=study.feasible.keep,
+        reference=named_reference(brief, study.candidates),
+        sphere=study.sphere,
+        displacements=candidate_channels(study.candidates).displacements(study.sphere, study.head),
+        figures_of_noise=calibration.figures(brief.noise.bandwidth),
+    )
 
 
 def _region_columns(region: Region, gain: np.ndarray, areas: np.ndarray) -> np.ndarray:
@@ -172,6 +193,7 @@ def design(brief: Brief, progress: Progress = silent) -> DesignResult:
         differ_by=search.differ_by or max(1, feasible.size // 8),
         starts=search.starts,
         seed=search.seed,
+        parts=search.proof_parts,
         time_allowance=search.time_allowance,
         progress=progress,
     )
@@ -213,6 +235,8 @@ def design(brief: Brief, progress: Progress = silent) -> DesignResult:
             "starts": ranking.starts,
             "swaps": ranking.swaps,
             "bound rounds": ranking.root.rounds,
+            "parts examined": ranking.proof.nodes if ranking.proof else 0,
+            "parts left open": ranking.proof.open_parts if ranking.proof else 0,
             "differ by": ranking.differ_by,
         },
         audit=_audit(model, feasible, ranking),
@@ -272,10 +296,9 @@ def _reference(study: Study, chosen: np.ndarray, marginal: np.ndarray) -> int | 
     contacts = [i for i, one in enumerate(chosen) if study.brief.stock[study.candidates.kind[one]].kind == "electrode"]
     if not contacts:
         return None
-    named = {one.reference for one in study.brief.stock if one.kind == "electrode"} - {"any"}
-    for i in contacts:
-        if study.candidates.sites.names[study.candidates.site[chosen[i]]] in named:
-            return int(chosen[i])
+    named = named_reference(study.brief, study.candidates)
+    if named is not None:
+        return named
     return int(chosen[min(contacts, key=lambda i: marginal[i])])
 
 
@@ -350,6 +373,8 @@ def _audit(model: LinearModel, feasible: Feasible, ranking: Ranking) -> dict[str
         "values": np.array([layout.value for layout in ranking.layouts]),
         "bounds": np.array([layout.bound for layout in ranking.layouts]),
         "root_bound": np.array(ranking.root.value),
+        "rank_bound": np.array(np.nan if ranking.by_rank is None else ranking.by_rank.value),
+        "rank_weights": np.zeros(0) if ranking.by_rank is None else ranking.by_rank.weights,
         "bound": np.array(ranking.layouts[0].bound),
         "schema": np.array(1),
     }

@@ -143,13 +143,15 @@ class NoiseBrief:
 class SearchBrief:
     """Effort: seeded starts and number of ranked layouts.
 
-    differ_by: sensors by which the ranks differ at least (0: chosen from the count).
+    differ_by: sensors by which the ranks differ at least (0: chosen from the count). proof_parts: parts of the tree
+    that branch and bound may examine to narrow the first layout's gap.
     """
 
     seed: int = 1
     starts: int = 20
     ranked: int = 3
     differ_by: int = 0
+    proof_parts: int = 300
     time_allowance: float | None = None  # [s]; None: no clock
 
 

@@ -302,6 +302,7 @@ class SearchForm(Form):
     starts: Annotated[int, Field(ge=1, le=1000)] = UNSET
     ranked: Annotated[int, Field(ge=1, le=50)] = UNSET
     differ_by: Annotated[int, Field(ge=0)] = UNSET
+    proof_parts: Annotated[int, Field(ge=0, le=10_000_000)] = UNSET
     time_allowance_s: Annotated[float, Field(gt=0, le=604_800), Into("time_allowance")] = UNSET
 
 

@@ -7,8 +7,6 @@ from collections.abc import Callable
 import numba
 import numpy as np
 
-Projection = Callable[[np.ndarray], np.ndarray]
-
 
 @numba.njit(cache=True)
 def project_on_cells(point: np.ndarray, cell: np.ndarray, group: np.ndarray, counts: np.ndarray) -> np.ndarray:
@@ -57,34 +55,71 @@ def project_on_cells(point: np.ndarray, cell: np.ndarray, group: np.ndarray, cou
     return out
 
 
-def project_on_simplex(point: np.ndarray) -> np.ndarray:
-    """Nearest w >= 0 with total 1 (Held, Wolfe & Crowder 1974, Mathematical Programming 6:62)."""
-    order = np.sort(point)[::-1]
-    shift = (np.cumsum(order) - 1.0) / np.arange(1, len(point) + 1)
-    last = np.flatnonzero(order > shift)[-1]
-    return np.maximum(point - shift[last], 0.0)
+@numba.njit(cache=True)
+def best_of_quadratic(
+    start: np.ndarray,
+    slope: np.ndarray,
+    curvature: np.ndarray,
+    cell: np.ndarray,
+    group: np.ndarray,
+    counts: np.ndarray,
+) -> np.ndarray:
+    """Maximise slope · d + ½ dᵀ curvature d, d = w - start, over the set of `project_on_cells`.
+
+    curvature (n, n) is negative semidefinite. Accelerated projected gradient with restart (Beck & Teboulle 2009, SIAM J
+    Imaging Sci 2:183; O'Donoghue & Candès 2015, Found Comput Math 15:715); the step is from a power iteration.
+    """
+    n = len(start)
+    direction = np.ones(n) / np.sqrt(n)
+    steepest = 0.0
+    for _ in range(20):
+        image = curvature @ direction
+        steepest = np.sqrt((image * image).sum())
+        if steepest <= 1e-300:
+            break
+        direction = image / steepest
+    step = 1.0 / (1.25 * steepest + 1e-300)
+    point = start.copy()
+    ahead = start.copy()
+    momentum = 1.0
+    for _ in range(400):
+        upward = slope + curvature @ (ahead - start)
+        trial = project_on_cells(ahead + step * upward, cell, group, counts)
+        if (upward * (trial - point)).sum() < 0:
+            momentum = 1.0
+            upward = slope + curvature @ (point - start)
+            trial = project_on_cells(point + step * upward, cell, group, counts)
+        grown = 0.5 * (1.0 + np.sqrt(1.0 + 4.0 * momentum * momentum))
+        ahead = trial + (momentum - 1.0) / grown * (trial - point)
+        moved = np.abs(trial - point).max()
+        point, momentum = trial, grown
+        if moved < 1e-7:
+            break
+    return point
 
 
 def newton_ascent(
     value: Callable[[np.ndarray], float],
     second_order: Callable[[np.ndarray], tuple[float, np.ndarray, np.ndarray]],
-    project: Projection,
     start: np.ndarray,
+    cell: np.ndarray,
+    group: np.ndarray,
+    counts: np.ndarray,
     iterations: int,
     stop: Callable[[np.ndarray, float, np.ndarray], bool],
 ) -> tuple[np.ndarray, float]:
     """Projected Newton with backtracking: each step maximises the quadratic model over the set and walks towards it.
 
-    second_order(point) gives value, gradient and Hessian (negative semidefinite); stop(point, value, gradient) ends the
-    ascent. Returns the point and its value. A handful of steps replaces hundreds of gradient steps whose cost is the
-    same factorisation.
+    second_order(point) gives value, gradient and Hessian (negative semidefinite); the set is `project_on_cells`'s;
+    stop(point, value, gradient) ends the ascent. Returns the point and its value. A handful of steps replaces hundreds
+    of gradient steps whose cost is the same factorisation.
     """
-    point = project(start)
+    point = project_on_cells(start, cell, group, counts)
     height, slope, curvature = second_order(point)
     for _ in range(iterations):
         if stop(point, height, slope):
             break
-        goal = _best_of_quadratic(point, slope, curvature, project)
+        goal = best_of_quadratic(point, slope, curvature, cell, group, counts)
         rise = slope @ (goal - point)
         if rise <= 1e-14 * (1.0 + abs(height)):
             break
@@ -96,24 +131,3 @@ def newton_ascent(
         point = point + stride * (goal - point)
         height, slope, curvature = second_order(point)
     return point, height
-
-
-def _best_of_quadratic(start: np.ndarray, slope: np.ndarray, curvature: np.ndarray, project: Projection) -> np.ndarray:
-    """Accelerated projected gradient with restart on the model (Beck & Teboulle 2009; O'Donoghue & Candès 2015)."""
-    step = 1.0 / (np.linalg.norm(curvature, 2 if len(curvature) < 40 else "fro") + 1e-300)
-    point = ahead = start
-    momentum = 1.0
-    for _ in range(400):
-        upward = slope + curvature @ (ahead - start)
-        trial = project(ahead + step * upward)
-        if upward @ (trial - point) < 0:
-            momentum, ahead = 1.0, point
-            upward = slope + curvature @ (ahead - start)
-            trial = project(ahead + step * upward)
-        grown = 0.5 * (1 + np.sqrt(1 + 4 * momentum**2))
-        ahead = trial + (momentum - 1) / grown * (trial - point)
-        moved = np.abs(trial - point).max()
-        point, momentum = trial, grown
-        if moved < 1e-9:
-            break
-    return point

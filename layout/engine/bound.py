@@ -3,14 +3,19 @@
 from __future__ import annotations
 
 import time
-from dataclasses import dataclass
+from collections.abc import Callable
+from dataclasses import dataclass, replace
 
 import numpy as np
 
-from layout.engine.ascent import newton_ascent, project_on_cells, project_on_simplex
+from layout.engine.ascent import newton_ascent
 from layout.engine.feasible import Feasible
-from layout.engine.model import LinearModel
+from layout.engine.model import ChannelTable, LinearModel
+from layout.engine.rank_aware import PooledRankAware, RankAwareRelaxation, rank_aware_in_source_space
 from layout.engine.relaxation import PooledRelaxation, value_and_gradient
+from layout.engine.remaining import Remaining
+
+Relax = Callable[[np.ndarray], PooledRelaxation | PooledRankAware]
 
 
 @dataclass(frozen=True)
@@ -34,6 +39,28 @@ def certify(model: LinearModel, feasible: Feasible, weights: np.ndarray) -> tupl
     return value - float(gradient @ weights) + best, value
 
 
+def certify_by_rank(
+    model: LinearModel, feasible: Feasible, weights: np.ndarray, target: np.ndarray
+) -> tuple[float, float]:
+    """The same for the rank-aware relaxation with the compressed target rows (n_channels, p), also in source space."""
+    channels = most_channels(model, feasible)
+    value, gradient = rank_aware_in_source_space(model, weights, target, channels)
+    best, _ = feasible.best_linear(gradient)
+    return value - float(gradient @ weights) + best, value
+
+
+@dataclass(frozen=True)
+class Tangent:
+    """limit [bits] that the tangent at `weights` puts on every allowed layout; value and gradient of f there."""
+
+    limit: float
+    value: float
+    weights: np.ndarray
+    gradient: np.ndarray
+    rounds: int = 0
+    stopped_by_clock: bool = False
+
+
 def tighten(
     model: LinearModel,
     feasible: Feasible,
@@ -42,90 +69,153 @@ def tighten(
     tolerance: float = 2e-4,
     rounds: int = 60,
     deadline: float | None = None,
-    start: np.ndarray | None = None,
 ) -> Bound:
-    """Maximise the relaxation until its own gap is under `tolerance` (relative), and certify the limit there.
+    """Maximise the relaxation from an allowed layout (k,) on until its own gap is under `tolerance` (relative).
 
-    layout (k,): an allowed layout, where the ascent starts unless weights `start` are given. Candidates enter the pool
-    when their price says so; all of them are priced every round.
+    The limit is certified anew at the weights reached. All candidates are priced every round, in the pool or not.
     """
-    solver = _CellAscent if feasible.cells is not None else _VertexAscent
-    ascent = solver(model, feasible, layout, start)
-    best: tuple[float, np.ndarray] | None = None
-    stopped = False
+    start = np.zeros(feasible.n_candidates)
+    start[layout] = 1.0
+    tangent = tighten_to(model, feasible, start, tolerance=tolerance, rounds=rounds, deadline=deadline)
+    limit, relaxed = certify(model, feasible, tangent.weights)
+    return Bound(limit, relaxed, tangent.weights, tangent.rounds, tangent.stopped_by_clock)
+
+
+def tighten_to(
+    model: ChannelTable,
+    feasible: Feasible,
+    start: np.ndarray,
+    *,
+    target: float | None = None,
+    tolerance: float = 2e-4,
+    rounds: int = 60,
+    deadline: float | None = None,
+    relax: Relax | None = None,
+) -> Tangent:
+    """The best tangent found from weights `start` (n_candidates,) on.
+
+    relax: pool of candidates -> relaxation on it (default: the plain one). With a `target` the ascent also ends as soon
+    as the limit is below it, or f itself so far above it that no tangent can be below.
+    """
+    relax = relax or (lambda pool: PooledRelaxation(model, pool))
+    ascent = (_CellAscent if feasible.cells is not None else _VertexAscent)(relax, feasible, start)
+    best: Tangent | None = None
     done = 0
-    while done < rounds:
+    while True:
         done += 1
         weights, value, gradient = ascent.advance(tolerance)
         price, vertex = feasible.best_linear(gradient)
         limit = value - float(gradient @ weights) + price
-        if best is None or limit < best[0]:
-            best = (limit, weights)
-        if limit - value <= tolerance * max(abs(value), 1e-12):
-            break
-        stopped = deadline is not None and time.monotonic() > deadline
-        if stopped or not ascent.grow(gradient, vertex):
-            break
-    limit, relaxed = certify(model, feasible, best[1])
-    return Bound(limit, relaxed, best[1], done, stopped)
+        late = deadline is not None and time.monotonic() > deadline
+        if best is None or limit < best.limit:
+            best = Tangent(limit, value, weights, gradient, done, late)
+        settled = limit - value <= tolerance * max(abs(value), 1e-12)
+        decided = target is not None and (limit <= target or value - target > limit - value)
+        if settled or decided or late or done >= rounds:
+            return replace(best, rounds=done, stopped_by_clock=late and not settled)
+        ascent.grow(gradient, vertex)
+
+
+def most_channels(model: ChannelTable, feasible: Feasible) -> int:
+    """The most channels that any allowed layout brings."""
+    widest = np.zeros(len(feasible.counts), dtype=int)
+    np.maximum.at(widest, feasible.group, (model.channels < model.n_channels).sum(axis=1))
+    return int(widest @ feasible.counts)
+
+
+def tighten_by_rank(
+    left: Remaining,
+    feasible: Feasible,
+    start: np.ndarray,
+    *,
+    target: float | None = None,
+    tolerance: float = 1e-3,
+    rounds: int = 30,
+) -> Tangent | None:
+    """The same with the rank-aware relaxation of what is `left`; None where it cannot be below the plain one."""
+    channels = most_channels(left, feasible)
+    if left.target is None or channels >= left.target.shape[1] or channels == 0:
+        return None
+    nuisance = left.nuisance_gram[:-1, :-1].copy()
+    nuisance[np.diag_indices_from(nuisance)] -= 1.0
+    whole = RankAwareRelaxation(left.target, nuisance, left.candidate_of_channel, channels)
+
+    def relax(pool: np.ndarray) -> PooledRankAware:
+        return PooledRankAware(whole, PooledRelaxation(left, pool))
+
+    return tighten_to(left, feasible, start, target=target, tolerance=tolerance, rounds=rounds, relax=relax)
 
 
 class _CellAscent:
     """Ascent in the weights themselves where projection on the rules is cheap (cells)."""
 
-    def __init__(self, model: LinearModel, feasible: Feasible, layout: np.ndarray, start: np.ndarray | None) -> None:
-        self.model, self.feasible = model, feasible
-        weights = np.zeros(feasible.n_candidates)
-        weights[layout] = 1.0
-        weights = weights if start is None else start
-        self._set_pool(np.flatnonzero(weights), weights)
+    def __init__(self, relax: Relax, feasible: Feasible, start: np.ndarray) -> None:
+        self.relax, self.feasible = relax, feasible
+        pool = np.flatnonzero(start)
+        if len(np.unique(feasible.cells[pool])) < feasible.size:
+            gradient = relax(pool).gradient_everywhere(start[pool])
+            pool = np.union1d(pool, np.flatnonzero(feasible.best_linear(gradient)[1]))
+        self._set_pool(pool, start)
 
     def _set_pool(self, pool: np.ndarray, weights: np.ndarray) -> None:
         cells = self.feasible.cells
         self.pool = pool
-        self._relaxation = PooledRelaxation(self.model, pool)
+        self._relaxation = self.relax(pool)
         kept = np.isin(pool, self.feasible.keep)
         free = np.flatnonzero(~np.isin(cells[pool], cells[pool[kept]]))
         self._free = free[np.argsort(cells[pool[free]], kind="stable")]
         self._fixed = kept.astype(float)
         group = self.feasible.group[pool]
-        self._counts = self.feasible.counts - np.bincount(group[kept], minlength=len(self.feasible.counts)).astype(
-            float
-        )
+        kept_counts = np.bincount(group[kept], minlength=len(self.feasible.counts))
+        self._counts = (self.feasible.counts - kept_counts).astype(float)
         self._cell, self._group = cells[pool[self._free]], group[self._free]
         self._weights = weights[pool]
 
-    def _project(self, point: np.ndarray) -> np.ndarray:
-        out = self._fixed.copy()
-        out[self._free] = project_on_cells(point[self._free], self._cell, self._group, self._counts)
-        return out
-
     def advance(self, tolerance: float) -> tuple[np.ndarray, float, np.ndarray]:
-        def settled(point: np.ndarray, value: float, slope: np.ndarray) -> bool:
-            spread = np.zeros(self.feasible.n_candidates)
-            spread[self.pool] = slope - slope.min() + 1.0  # a constant does not change the gap; keeps the pool ahead
-            best, _ = self.feasible.best_linear(spread)
-            return best - spread[self.pool] @ point <= 0.5 * tolerance * abs(value)
+        def whole(free: np.ndarray) -> np.ndarray:
+            point = self._fixed.copy()
+            point[self._free] = free
+            return point
 
-        point, value = newton_ascent(
-            self._relaxation.value, self._relaxation.second_order, self._project, self._weights, 12, settled
+        def second_order(free: np.ndarray) -> tuple[float, np.ndarray, np.ndarray]:
+            height, slope, curvature = self._relaxation.second_order(whole(free))
+            return height, slope[self._free], curvature[np.ix_(self._free, self._free)]
+
+        def settled(free: np.ndarray, height: float, slope: np.ndarray) -> bool:
+            price = np.zeros(self.feasible.n_candidates)
+            price[self.pool[self._free]] = slope - slope.min() + 1.0  # a constant changes no gap; keeps the pool ahead
+            best, _ = self.feasible.best_linear(price)
+            return best - price[self.pool[self._free]] @ free <= 0.5 * tolerance * abs(height)
+
+        if not len(self._free):
+            height = self._relaxation.value(self._fixed)
+            return self._everywhere(self._fixed), height, self._relaxation.gradient_everywhere(self._fixed)
+        free, height = newton_ascent(
+            lambda free: self._relaxation.value(whole(free)),
+            second_order,
+            self._weights[self._free],
+            self._cell,
+            self._group,
+            self._counts,
+            12,
+            settled,
         )
-        self._weights = point
-        weights = np.zeros(self.feasible.n_candidates)
-        weights[self.pool] = point
-        return weights, value, self._relaxation.gradient_everywhere(point)
+        self._weights = whole(free)
+        return self._everywhere(self._weights), height, self._relaxation.gradient_everywhere(self._weights)
 
-    def grow(self, gradient: np.ndarray, vertex: np.ndarray) -> bool:
-        weights = np.zeros(self.feasible.n_candidates)
-        weights[self.pool] = self._weights
+    def _everywhere(self, weights: np.ndarray) -> np.ndarray:
+        everywhere = np.zeros(self.feasible.n_candidates)
+        everywhere[self.pool] = weights
+        return everywhere
+
+    def grow(self, gradient: np.ndarray, vertex: np.ndarray) -> None:
         entering = np.flatnonzero((vertex > 0.5) & ~np.isin(np.arange(len(vertex)), self.pool))
         level = gradient[vertex > 0.5].min()
         room = max(0, self.feasible.size - len(entering))
         rivals = np.setdiff1d(np.flatnonzero(gradient > level - 0.02 * abs(level)), np.union1d(self.pool, entering))
         rivals = rivals[np.argsort(-gradient[rivals], kind="stable")][:room]
         live = self.pool[(self._weights > 0) | (gradient[self.pool] > 0.5 * level)]
-        self._set_pool(np.unique(np.concatenate([live, entering, rivals])), weights)
-        return True
+        self._set_pool(np.unique(np.concatenate([live, entering, rivals])), self._everywhere(self._weights))
 
 
 class _VertexAscent:
@@ -134,18 +224,21 @@ class _VertexAscent:
     von Hohenbalken 1977, Mathematical Programming 13:49. Serves any linear rules, spacing among them.
     """
 
-    def __init__(self, model: LinearModel, feasible: Feasible, layout: np.ndarray, start: np.ndarray | None) -> None:
-        self.model, self.feasible = model, feasible
-        first = np.zeros(feasible.n_candidates)
-        first[layout] = 1.0
-        self._vertices = [first] if start is None else [first, start]
+    def __init__(self, relax: Relax, feasible: Feasible, start: np.ndarray) -> None:
+        self.relax, self.feasible = relax, feasible
+        self._vertices = [start]
+        held = np.bincount(feasible.group, weights=start, minlength=len(feasible.counts))
+        if (held < feasible.counts - 1e-6).any():
+            pool = np.flatnonzero(start)
+            gradient = relax(pool).gradient_everywhere(start[pool])
+            self._vertices.append(feasible.best_linear(gradient)[1])
         self._mix = np.full(len(self._vertices), 1.0 / len(self._vertices))
 
     def advance(self, tolerance: float) -> tuple[np.ndarray, float, np.ndarray]:
         stack = np.column_stack(self._vertices)
         pool = np.flatnonzero(stack.any(axis=1))
         stack = stack[pool]
-        relaxation = PooledRelaxation(self.model, pool)
+        relaxation = self.relax(pool)
 
         def value(mix: np.ndarray) -> float:
             return relaxation.value(stack @ mix)
@@ -157,13 +250,13 @@ class _VertexAscent:
         def settled(mix: np.ndarray, height: float, slope: np.ndarray) -> bool:
             return slope.max() - slope @ mix <= 0.2 * tolerance * abs(height)
 
-        self._mix, height = newton_ascent(value, second_order, project_on_simplex, self._mix, 12, settled)
+        one = np.zeros(len(self._mix), dtype=np.int64)  # a single cell that must be full: the simplex
+        self._mix, height = newton_ascent(value, second_order, self._mix, one, one, np.ones(1), 12, settled)
         weights = np.zeros(self.feasible.n_candidates)
         weights[pool] = stack @ self._mix
         return weights, height, relaxation.gradient_everywhere(weights[pool])
 
-    def grow(self, gradient: np.ndarray, vertex: np.ndarray) -> bool:
+    def grow(self, gradient: np.ndarray, vertex: np.ndarray) -> None:
         held = self._mix > 1e-9
         self._vertices = [v for v, live in zip(self._vertices, held, strict=True) if live] + [vertex]
         self._mix = np.append(self._mix[held], 0.0)
-        return True

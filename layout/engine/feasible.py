@@ -40,6 +40,12 @@ class Feasible:
                 both = sorted(int(c) for c in clique if c in self.keep)
                 raise InfeasibleError(f"Candidates {both[0]} and {both[1]} must both be kept but exclude each other.")
 
+        for members, limit in self.at_most:
+            if np.isin(self.keep, members).sum() > limit:
+                raise InfeasibleError(
+                    f"At most {limit} of {len(members)} candidates may be chosen, but more of them must be kept."
+                )
+
     @property
     def n_candidates(self) -> int:
         """Number of candidates."""
@@ -73,6 +79,20 @@ class Feasible:
         alone = cell < 0
         cell[alone] = len(self.cliques) + np.arange(alone.sum())
         return None if self.at_most else cell
+
+    def given(self, chosen: np.ndarray, candidates: np.ndarray) -> Feasible:
+        """The rules for the rest of a layout: `candidates` (sorted, each addable to `chosen`), numbered from 0."""
+        number = np.full(self.n_candidates, -1)
+        number[candidates] = np.arange(len(candidates))
+        cliques = (number[clique] for clique in self.cliques)
+        at_most = ((number[members], limit - int(np.isin(chosen, members).sum())) for members, limit in self.at_most)
+        return Feasible(
+            group=self.group[candidates],
+            counts=self.counts - np.bincount(self.group[chosen], minlength=len(self.counts)),
+            cliques=tuple(part[part >= 0] for part in cliques if (part >= 0).any()),
+            keep=tuple(int(number[one]) for one in self.keep if number[one] >= 0),
+            at_most=tuple((part[part >= 0], limit) for part, limit in at_most),
+        )
 
     def with_at_most(self, members: np.ndarray, limit: int) -> Feasible:
         """The same rules and one more."""
@@ -143,7 +163,24 @@ class Feasible:
         """
         if self.cells is not None:
             return self._best_of_cells(price)
+        limit, v, _ = self._solve(price)
+        return limit, v
+
+    def losses(self, price: np.ndarray) -> tuple[float, np.ndarray, np.ndarray]:
+        """(limit, loss_in, loss_out): how far the limit falls at least if a candidate must be in, or must be out.
+
+        Both (n,) >= 0; from the reduced costs of the linear programme, or exactly where cells are clean.
+        """
+        if self.cells is not None:
+            return self._losses_of_cells(price)
+        limit, _, reduced = self._solve(price)
+        return limit, *(np.where(self._lower > 0, 0.0, np.maximum(sign * reduced, 0.0)) for sign in (-1, 1))
+
+    def _solve(self, price: np.ndarray) -> tuple[float, np.ndarray, np.ndarray]:
+        """Limit from clipped duals, a solution, and the reduced prices."""
         upper, limits, group = self._rows
+        scale = float(np.abs(price).max()) or 1.0  # the solver's tolerances are absolute
+        price = price / scale
         answer = linprog(
             -price,
             A_ub=upper if len(limits) else None,
@@ -153,15 +190,21 @@ class Feasible:
             bounds=np.column_stack([self._lower, np.ones(self.n_candidates)]),
             method="highs",
         )
-        if answer.status != 0:
-            raise InfeasibleError(
-                f"The rules must allow {self.size} sensors together, but no layout keeps them all ({answer.message})."
-            )
-        dual = np.maximum(-answer.ineqlin.marginals, 0.0) if len(limits) else np.zeros(0)
-        free = -answer.eqlin.marginals
+        if answer.status == 2:
+            raise InfeasibleError(f"The rules must allow {self.size} sensors together, but no layout keeps them all.")
+        if answer.status == 0:
+            v = np.clip(answer.x, 0.0, 1.0)
+            dual = np.maximum(-answer.ineqlin.marginals, 0.0) if len(limits) else np.zeros(0)
+            free = -answer.eqlin.marginals
+        else:  # the solver gave up: the groups' best candidates, whatever excludes them, are a limit all the same
+            best = [np.flatnonzero(self.group == g) for g in range(len(self.counts))]
+            best = [part[np.argsort(-price[part])][:count] for part, count in zip(best, self.counts, strict=True)]
+            v = np.zeros(self.n_candidates)
+            v[np.concatenate(best)] = 1.0
+            dual, free = np.zeros(len(limits)), np.array([price[part].min(initial=0.0) for part in best])
         reduced = price - (upper.T @ dual if len(limits) else 0.0) - group.T @ free
         limit = dual @ limits + free @ self.counts + np.where(self._lower > 0, reduced, np.maximum(reduced, 0.0)).sum()
-        return float(limit), np.clip(answer.x, 0.0, 1.0)
+        return scale * float(limit), v, scale * reduced
 
     def _best_of_cells(self, price: np.ndarray) -> tuple[float, np.ndarray]:
         chosen = np.array(sorted(self.keep), dtype=int)
@@ -177,6 +220,29 @@ class Feasible:
             raise InfeasibleError(f"The rules must allow {self.size} sensors together, but at most {len(chosen)} fit.")
         return float(price @ v), v
 
+    def _losses_of_cells(self, price: np.ndarray) -> tuple[float, np.ndarray, np.ndarray]:
+        limit, v = self._best_of_cells(price)
+        picked = np.flatnonzero(v)
+        n_cells = int(self.cells.max()) + 1
+        best, second = np.full(n_cells, -np.inf), np.full(n_cells, -np.inf)
+        np.maximum.at(best, self.cells, price)
+        top = np.zeros(len(price), dtype=bool)
+        top[picked] = True
+        np.maximum.at(second, self.cells[~top], price[~top])
+        taken = np.zeros(n_cells, dtype=bool)
+        taken[self.cells[picked]] = True
+        lowest, next_best = np.full(len(self.counts), np.inf), np.full(len(self.counts), -np.inf)
+        free = picked[~np.isin(picked, self.keep)]
+        np.minimum.at(lowest, self.group[free], price[free])
+        idle = ~taken[self.cells]
+        np.maximum.at(next_best, self.group[idle], price[idle])
+        loss_in = np.where(idle, lowest[self.group], best[self.cells]) - price
+        loss_in[np.isin(self.cells, self.cells[list(self.keep)])] = np.inf
+        loss_in[picked] = 0.0
+        loss_out = np.zeros(len(price))
+        loss_out[free] = price[free] - np.maximum(second[self.cells[free]], next_best[self.group[free]])
+        return limit, np.maximum(loss_in, 0.0), np.maximum(loss_out, 0.0)
+
     def any_set(self, price: np.ndarray) -> np.ndarray:
         """An allowed set of large total price, by mixed-integer programming; InfeasibleError if there is none."""
         upper, limits, group = self._rows
@@ -191,8 +257,6 @@ class Feasible:
             options={"mip_rel_gap": 0.05, "node_limit": 2000},
         )
         if answer.x is None:
-            raise InfeasibleError(
-                f"The rules must allow {self.size} sensors together, but no layout was found that keeps them all "
-                f"({answer.message})."
-            )
+            found = "no layout keeps them all" if answer.status == 2 else "none was found that keeps them all"
+            raise InfeasibleError(f"The rules must allow {self.size} sensors together, but {found}.")
         return np.flatnonzero(answer.x > 0.5)

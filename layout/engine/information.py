@@ -12,15 +12,15 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
-from scipy.linalg import cho_factor, cho_solve, cholesky
+from scipy.linalg import cho_factor, cho_solve, cholesky, solve_triangular
 
-from layout.engine.model import LinearModel
+from layout.engine.model import ChannelTable, LinearModel
 
 BITS = 0.5 / np.log(2.0)  # from natural log-determinants to bits
 
 
 def information(model: LinearModel, chosen: np.ndarray) -> float:
-    """Information of the chosen candidates [bits], computed from the model's rows on the smaller side."""
+    """Information of the chosen candidates [bits], computed from the model's rows."""
     rows = model.channels_of(chosen)
     if len(rows) == 0:
         return 0.0
@@ -62,20 +62,32 @@ def _condition(
 ) -> _Side:
     cross = gram[rows]
     if not len(rows):
-        blocks = gram[channels[:, :, None], channels[:, None, :]]
-        return _Side(np.zeros((0, 0)), cross, 0.0, np.zeros(0), 0.0, offset, blocks)
+        return _Side(np.zeros((0, 0)), cross, 0.0, np.zeros(0), 0.0, offset, _own_blocks(gram, channels))
     factor = cho_factor(gram[np.ix_(rows, rows)], lower=True)
     inverse = cho_solve(factor, np.eye(len(rows)))
-    pull = inverse @ cross
+    # By triangular solves: with the explicit inverse, conditional variances under very strong nuisance turn negative.
+    half = solve_triangular(factor[0], cross, lower=True)
+    pull = solve_triangular(factor[0], half, lower=True, trans=1)
     u = inverse @ offset[rows]
     if channels.shape[1] == 1:
-        blocks = (np.diag(gram) - np.einsum("ij,ij->j", cross, pull))[channels[:, 0], None, None]
+        blocks = (np.diag(gram) - np.einsum("ij,ij->j", half, half))[channels[:, 0], None, None]
     else:
-        blocks = gram[channels[:, :, None], channels[:, None, :]]
-        blocks = blocks - np.einsum("cik,cil->ikl", cross[:, channels], pull[:, channels], optimize=True)
+        blocks = _own_blocks(gram, channels) - np.einsum(
+            "cik,cil->ikl", half[:, channels], half[:, channels], optimize=True
+        )
     blocks[chosen] = np.eye(channels.shape[1])  # nothing is left of a chosen candidate; keep its block invertible
     log_det = 2.0 * np.log(np.diag(factor[0])).sum()
     return _Side(inverse, pull, log_det, u, float(offset[rows] @ u), offset - cross.T @ u, blocks)
+
+
+def _own_blocks(gram: np.ndarray, channels: np.ndarray) -> np.ndarray:
+    """Covariance of each candidate's own channels (n_candidates, m, m); padding is independent of everything."""
+    blocks = gram[channels[:, :, None], channels[:, None, :]]
+    silent = channels == len(gram) - 1
+    blocks[silent[:, :, None] & silent[:, None, :]] = 0.0
+    places = np.arange(channels.shape[1])
+    blocks[:, places, places] = np.where(silent, 1.0, blocks[:, places, places])
+    return blocks
 
 
 def _log_det(blocks: np.ndarray) -> np.ndarray:
@@ -97,7 +109,7 @@ class Conditioned:
     O(k n) small-block operations and no further factorisation of the chosen block.
     """
 
-    def __init__(self, model: LinearModel, chosen: np.ndarray) -> None:
+    def __init__(self, model: ChannelTable, chosen: np.ndarray) -> None:
         self.model = model
         self.chosen = np.asarray(chosen, dtype=int)
         rows = model.channels_of(self.chosen)

@@ -10,8 +10,53 @@ import numpy as np
 from layout.errors import LayoutError
 
 
+class ChannelTable:
+    """Which channels each candidate brings; shared by a model and by what is left of it once some are chosen.
+
+    Subclasses have offset (n_channels,), candidate_of_channel (n_channels,) and the Gram matrices both_gram and
+    nuisance_gram (n_channels + 1 squared), whose last row and column belong to a silent channel used as padding.
+    """
+
+    offset: np.ndarray
+    candidate_of_channel: np.ndarray
+
+    @property
+    def n_channels(self) -> int:
+        """Number of channels over all candidates."""
+        return len(self.offset)
+
+    @cached_property
+    def n_candidates(self) -> int:
+        """Number of candidates."""
+        return int(self.candidate_of_channel[-1]) + 1 if self.n_channels else 0
+
+    @cached_property
+    def channels(self) -> np.ndarray:
+        """Channels of each candidate (n_candidates, widest), padded with n_channels: the index of a silent channel."""
+        counts = np.bincount(self.candidate_of_channel, minlength=self.n_candidates)
+        table = np.full((self.n_candidates, int(counts.max(initial=1))), self.n_channels)
+        place = np.arange(self.n_channels) - np.concatenate([[0], np.cumsum(counts)[:-1]])[self.candidate_of_channel]
+        table[self.candidate_of_channel, place] = np.arange(self.n_channels)
+        return table
+
+    @cached_property
+    def padded_offset(self) -> np.ndarray:
+        """The offset row with a 0 for the silent channel (n_channels + 1,)."""
+        return np.append(self.offset, 0.0)
+
+    @cached_property
+    def has_offset(self) -> np.ndarray:
+        """Which candidates bring a channel that sees the offset (n_candidates,) bool."""
+        return (self.padded_offset[self.channels] != 0).any(axis=1)
+
+    def channels_of(self, chosen: np.ndarray) -> np.ndarray:
+        """Channel numbers of the chosen candidates, in the order of `chosen`."""
+        flat = self.channels[np.asarray(chosen, dtype=int)].ravel()
+        return flat[flat < self.n_channels]
+
+
 @dataclass(frozen=True)
-class LinearModel:
+class LinearModel(ChannelTable):
     """y = A s + B b + o t + e per channel, every row divided by the channel's own independent noise.
 
     target A (n_channels, n_target): what is wanted, s ~ N(0, I). nuisance B (n_channels, n_nuisance), b ~ N(0, I).
@@ -39,29 +84,10 @@ class LinearModel:
         if n and (owner[0] != 0 or not np.isin(np.diff(owner), (0, 1)).all()):
             raise LayoutError("candidate_of_channel must be sorted and name every candidate from 0 on, without a hole.")
 
-    @property
-    def n_channels(self) -> int:
-        """Number of channels over all candidates."""
-        return len(self.offset)
-
-    @cached_property
-    def n_candidates(self) -> int:
-        """Number of candidates."""
-        return int(self.candidate_of_channel[-1]) + 1 if self.n_channels else 0
-
     @cached_property
     def both(self) -> np.ndarray:
         """C = [A B] (n_channels, n_target + n_nuisance): target and nuisance kept in one matrix."""
         return np.hstack([self.target, self.nuisance])
-
-    @cached_property
-    def channels(self) -> np.ndarray:
-        """Channels of each candidate (n_candidates, widest), padded with n_channels: the index of a silent channel."""
-        counts = np.bincount(self.candidate_of_channel, minlength=self.n_candidates)
-        table = np.full((self.n_candidates, int(counts.max(initial=1))), self.n_channels)
-        place = np.arange(self.n_channels) - np.concatenate([[0], np.cumsum(counts)[:-1]])[self.candidate_of_channel]
-        table[self.candidate_of_channel, place] = np.arange(self.n_channels)
-        return table
 
     @cached_property
     def nuisance_gram(self) -> np.ndarray:
@@ -74,21 +100,6 @@ class LinearModel:
         gram = self.nuisance_gram.copy()
         gram[:-1, :-1] += self.target @ self.target.T
         return gram
-
-    @cached_property
-    def padded_offset(self) -> np.ndarray:
-        """The offset row with a 0 for the silent channel (n_channels + 1,)."""
-        return np.append(self.offset, 0.0)
-
-    @cached_property
-    def has_offset(self) -> np.ndarray:
-        """Which candidates bring a channel that sees the offset (n_candidates,) bool."""
-        return (self.padded_offset[self.channels] != 0).any(axis=1)
-
-    def channels_of(self, chosen: np.ndarray) -> np.ndarray:
-        """Channel numbers of the chosen candidates, in the order of `chosen`."""
-        flat = self.channels[np.asarray(chosen, dtype=int)].ravel()
-        return flat[flat < self.n_channels]
 
 
 def _padded_gram(rows: np.ndarray) -> np.ndarray:

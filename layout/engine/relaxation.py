@@ -16,7 +16,7 @@ import numpy as np
 from scipy.linalg import cho_solve, cholesky, solve_triangular
 
 from layout.engine.information import BITS
-from layout.engine.model import LinearModel
+from layout.engine.model import ChannelTable, LinearModel
 
 
 class PooledRelaxation:
@@ -25,18 +25,18 @@ class PooledRelaxation:
     The channels of the pool's complement have weight zero.
     """
 
-    def __init__(self, model: LinearModel, pool: np.ndarray) -> None:
+    def __init__(self, model: ChannelTable, pool: np.ndarray) -> None:
         self.model = model
         self.pool = pool
-        self._rows = model.channels_of(pool)
-        self._owner = np.searchsorted(pool, model.candidate_of_channel[self._rows])
+        self.rows = model.channels_of(pool)
+        self._owner = np.searchsorted(pool, model.candidate_of_channel[self.rows])
         grams = (model.both_gram, model.nuisance_gram)
         self._grams = []
         for gram in grams:
-            block = gram[np.ix_(self._rows, self._rows)]
+            block = gram[np.ix_(self.rows, self.rows)]
             block[np.diag_indices_from(block)] -= 1.0
             self._grams.append(block)
-        self._offset = model.offset[self._rows]
+        self._offset = model.offset[self.rows]
 
     def value(self, weights: np.ndarray) -> float:
         """f at pool weights (n_pool,) >= 0 [bits]."""
@@ -61,8 +61,8 @@ class PooledRelaxation:
         root = np.sqrt(weights[self._owner][live])
         offset = root * self._offset[live]
         total = 0.0
-        gradient = np.zeros(len(self._rows))
-        hessian = np.zeros((len(self._rows), len(self._rows)))
+        gradient = np.zeros(len(self.rows))
+        hessian = np.zeros((len(self.rows), len(self.rows)))
         for sign, gram in zip((1.0, -1.0), self._grams, strict=True):
             factor = cholesky(_scaled(gram[np.ix_(live, live)], root), lower=True, check_finite=False)
             half = solve_triangular(factor, root[:, None] * gram[live], lower=True, check_finite=False)
@@ -77,7 +77,7 @@ class PooledRelaxation:
             gradient += sign * np.diag(left)
             hessian -= sign * left * left
         gradient = np.bincount(self._owner, weights=gradient, minlength=len(self.pool))
-        if len(self._rows) > len(self.pool):
+        if len(self.rows) > len(self.pool):
             start = np.searchsorted(self._owner, np.arange(len(self.pool)))
             hessian = np.add.reduceat(np.add.reduceat(hessian, start, axis=0), start, axis=1)
         return float(BITS * total), BITS * gradient, BITS * hessian
@@ -86,7 +86,7 @@ class PooledRelaxation:
         """The gradient over all candidates of the model (n_candidates,), pooled or not."""
         model = self.model
         live = weights[self._owner] > 0
-        rows = self._rows[live]
+        rows = self.rows[live]
         root = np.sqrt(weights[self._owner][live])
         gradient = np.zeros(model.n_channels)
         for sign, full in ((1.0, model.both_gram), (-1.0, model.nuisance_gram)):
@@ -112,8 +112,8 @@ def value_and_gradient(model: LinearModel, weights: np.ndarray) -> tuple[float, 
     """f [bits] and its gradient (n_candidates,), in source space, from the model's rows: no Gram matrix, no pool.
 
     Used to re-evaluate a bound before it is printed: it shares no intermediate result with the solver. Where no channel
-    that sees the offset has weight, |a|²/(2 ln 2) is a valid supergradient of such a channel (any multiple of the
-    offset may be taken from its row).
+    that sees the offset has weight, the gradient without the offset stands: it is that of every finite prior variance
+    of the offset, so the tangent bounds their limit too.
     """
     per_channel = np.asarray(weights, dtype=float)[model.candidate_of_channel]
     total = 0.0
@@ -132,7 +132,4 @@ def value_and_gradient(model: LinearModel, weights: np.ndarray) -> tuple[float, 
             q = (per_channel[live] * offset) @ remainder[live]
             total += sign * np.log(q)
             gradient += sign * remainder**2 / q
-    if not seen:
-        blind = model.offset != 0
-        gradient[blind] = (model.target[blind] ** 2).sum(axis=1)
     return BITS * total, BITS * np.bincount(model.candidate_of_channel, weights=gradient, minlength=model.n_candidates)

@@ -84,7 +84,10 @@ def exchange(model: LinearModel, feasible: Feasible, chosen: np.ndarray) -> tupl
         place, arriving = np.unravel_index(np.argmax(table), table.shape)
         if not table[place, arriving] > value + IMPROVEMENT:
             return np.sort(chosen), value, swaps
-        chosen[place] = arriving
+        leaving, chosen[place] = chosen[place], arriving
         state = Conditioned(model, chosen)
+        if not state.value > value + IMPROVEMENT:  # the table promised less than its rounding
+            chosen[place] = leaving
+            return np.sort(chosen), value, swaps
         value, swaps = state.value, swaps + 1
     return chosen, value, swaps

@@ -7,6 +7,7 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 from scipy.spatial import cKDTree
+from threadpoolctl import threadpool_limits
 
 from layout.engine.feasible import Feasible
 from layout.engine.information import information
@@ -16,6 +17,8 @@ from layout.evidence.spread import even_spread
 from layout.units import MM
 
 RANDOM_LAYOUTS = 200
+# Small factorisations: on a busy machine, threads made each a hundred times slower.
+one_thread = threadpool_limits.wrap(limits=1, user_api="blas")
 NEAR = 12 * MM  # a standard position farther than this from every site is not available
 
 
@@ -41,11 +44,12 @@ def evenly(points: np.ndarray, site: np.ndarray, feasible: Feasible, counts: np.
     picked = []
     for entry, count in enumerate(counts):
         sites, candidates = first_at_site(site, feasible.group, entry)
-        fixed = np.flatnonzero(np.isin(sites, site[list(feasible.keep)]))[:count]
+        fixed = np.flatnonzero(np.isin(candidates, feasible.keep))
         picked.append(candidates[even_spread(points[sites], int(count), fixed)])
     return np.concatenate(picked)
 
 
+@one_thread
 def equal_even_spread(
     model: LinearModel,
     feasible: Feasible,
@@ -54,8 +58,9 @@ def equal_even_spread(
     value: float,
     cache: dict[int, float],
 ) -> tuple[int | None, int]:
-    """(n, largest): the count at which an even spread reaches `value` [bits], found by bisection; None if none does.
+    """(n, largest): a count at which an even spread reaches `value` [bits] and one less does not; None if none does.
 
+    Found by bisection: it is the smallest such count where the value rises with the count, as it nearly always does.
     For a stock of one entry; `largest` is the number of its sites. cache: values of spreads already computed.
     """
     largest = len(np.unique(site))
@@ -92,7 +97,7 @@ def standard_subset(
     finest = families[0][0]
     for entry, count in enumerate(feasible.counts):
         sites, candidates = first_at_site(site, feasible.group, entry)
-        chosen = np.flatnonzero(np.isin(sites, site[list(feasible.keep)]))[:count]
+        chosen = np.flatnonzero(np.isin(candidates, feasible.keep))
         tree = cKDTree(points[sites])
         for name, positions in families:
             if len(chosen) == count:
@@ -126,6 +131,7 @@ def best_singles(model: LinearModel, feasible: Feasible) -> np.ndarray:
     return chosen
 
 
+@one_thread
 def yardsticks(
     model: LinearModel,
     feasible: Feasible,

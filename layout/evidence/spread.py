@@ -16,22 +16,34 @@ def even_spread(points: np.ndarray, count: int, fixed: np.ndarray | None = None)
     28:129). Nothing is drawn at random. Returns indices (count,), the fixed ones first.
     """
     fixed = np.zeros(0, dtype=int) if fixed is None else np.asarray(fixed, dtype=int)
+    if count <= len(fixed):
+        return fixed[:count]
     distance = cdist(points, points)
     chosen = list(fixed) or [int(np.argmin(np.linalg.norm(points - points.mean(axis=0), axis=1)))]
     nearest = distance[chosen].min(axis=0)
     while len(chosen) < count:
         chosen.append(int(np.argmax(nearest)))
         nearest = np.minimum(nearest, distance[chosen[-1]])
-    chosen = np.array(chosen[:count])
+    chosen = np.array(chosen)
     for _ in range(SETTLING_STEPS):
-        serving = np.argmin(distance[:, chosen], axis=1)
-        moved = chosen.copy()
-        for seed in range(len(fixed), count):
-            served = np.flatnonzero(serving == seed)
-            if len(served):
-                middle = points[served].mean(axis=0)
-                moved[seed] = served[np.argmin(((points[served] - middle) ** 2).sum(axis=1))]
+        moved = _middles(points, np.argmin(distance[:, chosen], axis=1), chosen)
+        moved[: len(fixed)] = fixed
         if (moved == chosen).all():
             break
         chosen = moved
     return chosen
+
+
+def _middles(points: np.ndarray, serving: np.ndarray, chosen: np.ndarray) -> np.ndarray:
+    """For each seed (count,) the point nearest to the mean of those it serves; itself if it serves none.
+
+    serving (n,): which seed serves each point.
+    """
+    served = np.bincount(serving, minlength=len(chosen))
+    sums = np.stack([np.bincount(serving, x, len(chosen)) for x in points.T], axis=1)
+    means = sums / np.maximum(served, 1)[:, None]
+    order = np.lexsort((((points - means[serving]) ** 2).sum(axis=1), serving))
+    moved = chosen.copy()
+    some = served > 0
+    moved[some] = order[(np.cumsum(served) - served)[some]]
+    return moved

@@ -8,7 +8,7 @@ from layout.anatomy.head import Head
 from layout.physics.channels import Channels
 from layout.physics.sphere_model import SphereModel
 
-CHANNELS_AT_ONCE = 256  # keeps the lead field to all sources out of memory at once
+GAIN_AT_ONCE = 16_000_000  # numbers: keeps the lead field to all sources out of memory at once
 
 
 def background_columns(
@@ -18,15 +18,25 @@ def background_columns(
 
     labels (n_sources,): the sources' patches; left_out (n_sources,) bool: sources that are not background. Moments
     follow the cortical normals; on a head without them each patch has three independent components of a third of the
-    variance.
+    variance. Columns are in the order of the patches' numbers.
     """
-    everything = np.arange(len(head.cortex))
+    free = not head.normal_orientation
     parts = []
-    for first in range(0, len(channels), CHANNELS_AT_ONCE):
-        some = channels.part(slice(first, first + CHANNELS_AT_ONCE))
-        gain = some.lead_field(sphere, head, everything, free=not head.normal_orientation).gain
-        parts.append(patch_columns(gain, head.cortex.areas, labels, left_out))
-    return np.concatenate(parts)
+    for some in _whole_patches(labels, GAIN_AT_ONCE // (len(channels) * (3 if free else 1))):
+        gain = channels.lead_field(sphere, head, some, free=free).gain
+        parts.append(patch_columns(gain, head.cortex.areas[some], labels[some], left_out[some]))
+    return np.hstack(parts)
+
+
+def _whole_patches(labels: np.ndarray, at_once: int) -> list[np.ndarray]:
+    """The sources in order of their patch, cut between patches into pieces of about at_once.
+
+    Cut by sources and not by channels: placing a source on the spheres costs more than its lead field.
+    """
+    order = np.argsort(labels, kind="stable")
+    starts = np.flatnonzero(np.diff(labels[order], prepend=-1))
+    new_piece = np.diff(starts // max(1, at_once), prepend=-1) > 0
+    return np.split(order, starts[new_piece][1:])
 
 
 def patch_columns(gain: np.ndarray, areas: np.ndarray, labels: np.ndarray, left_out: np.ndarray) -> np.ndarray:

@@ -10,7 +10,7 @@ from layout.anatomy.head import Head
 from layout.brief.objects import NoiseBrief
 from layout.noise.background import average_referenced_rms, background_columns
 from layout.noise.eyes import eye_moment
-from layout.physics.channels import electrodes_at, normal_magnetometers_above
+from layout.physics.channels import electrodes_at, joined, normal_magnetometers_above
 from layout.physics.sphere_model import SphereModel
 from layout.units import FT, MM, MM2, NAM, UV
 
@@ -68,15 +68,13 @@ def calibrate(
     (n_sources,): patches. The density found is then held for every head and conductivity.
     """
     points = np.array(list(sites.values()))
-    whole = np.zeros(len(head.cortex), dtype=bool)
     electrodes = electrodes_at(points)
-    unit = average_referenced_rms(background_columns(electrodes, sphere, head, labels, whole))
-    density = noise.eeg_rms / unit
-    magnetic = []
-    for gap in (OFF_SCALP, ON_SCALP):
-        coils = normal_magnetometers_above(points, normals, gap)
-        columns = background_columns(coils, sphere, head, labels, whole)
-        magnetic.append(density * float(np.sqrt((columns**2).sum(axis=1).mean())))
+    coils = [normal_magnetometers_above(points, normals, gap) for gap in (OFF_SCALP, ON_SCALP)]
+    whole = np.zeros(len(head.cortex), dtype=bool)
+    columns = background_columns(joined(electrodes, *coils), sphere, head, labels, whole)
+    potential, *fields = np.split(columns, 3)
+    density = noise.eeg_rms / average_referenced_rms(potential)
+    magnetic = [density * float(np.sqrt((field**2).sum(axis=1).mean())) for field in fields]
     frontal = np.isin(list(sites), FRONTAL)
     eye = eye_moment(electrodes.eye_gain(sphere, head), frontal, noise.eyes_rms) if noise.eyes_rms > 0 else 0.0
     return Calibration(density, eye, noise.eeg_rms, *magnetic)

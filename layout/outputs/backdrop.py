@@ -61,16 +61,19 @@ def paint_backdrop(head: Head, regions: tuple[Region, ...], view: View) -> Backd
     image = np.ones((side, side, 3))
     image[face >= 0] = (CORTEX_GREY * (0.72 + 0.28 * light[..., None]))[face >= 0]
 
+    members = np.zeros((len(head.cortex), len(regions)))
     for index, region in enumerate(regions):
-        colour = np.array(_rgb(region_colour(index)))
-        member = np.zeros(len(head.cortex))
-        member[region.members] = 1.0
+        members[region.members, index] = 1.0
+    for index in range(len(regions)):
+        colour, member = np.array(_rgb(region_colour(index))), members[:, index]
         near = np.any(member[head.cortex.faces] > 0, axis=1)
         behind, behind_weights, _ = _see(head.cortex.positions, head.cortex.faces[near], view, frame)
         hidden = _blend(member[:, None], head.cortex.faces[near], behind, behind_weights)[..., 0] > 0.5
         image[hidden] += HIDDEN_STRENGTH * (colour - image[hidden])
-        seen = _blend(member[:, None], head.cortex.faces, face, weights)[..., 0] > 0.5
-        image[seen] = (colour * (0.80 + 0.20 * light[..., None]))[seen]
+    seen = _blend(members, head.cortex.faces, face, weights) > 0.5
+    for index in range(len(regions)):  # after all hidden ones, which would tint what lies in front of them
+        here = seen[..., index]
+        image[here] = (np.array(_rgb(region_colour(index))) * (0.80 + 0.20 * light[..., None]))[here]
 
     face, weights, height = _see(head.scalp.vertices, head.scalp.faces, view, frame)
     normals = _vertex_normals(head.scalp.vertices, head.scalp.faces)

@@ -4,11 +4,13 @@ axes."""
 from __future__ import annotations
 
 import io
+from collections.abc import Callable
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
 import numpy as np
 
+from layout.anatomy.head import Head, Region
 from layout.outputs.backdrop import Backdrop, paint_backdrop, region_colour, window
 from layout.outputs.plain import fixed, rounded_up, shortened
 from layout.outputs.result import DesignResult, RankedLayout, SensorRow
@@ -53,38 +55,55 @@ def scalp_picture(result: DesignResult, layout: RankedLayout, backdrops: dict[st
     import matplotlib
 
     with matplotlib.rc_context(STYLE):
-        figure = scalp_figure(result, layout, backdrops)
-        png, svg = io.BytesIO(), io.BytesIO()
-        figure.savefig(png, format="png", dpi=DPI, metadata={"Software": None})
-        figure.savefig(svg, format="svg", dpi=DPI, metadata={"Date": None, "Creator": None})
+        return rendered(scalp_figure(result, layout, backdrops))
+
+
+def rendered(figure: Figure) -> Picture:
+    """A figure as file contents without time or program in them."""
+    png, svg = io.BytesIO(), io.BytesIO()
+    figure.savefig(png, format="png", dpi=DPI, metadata={"Software": None})
+    figure.savefig(svg, format="svg", dpi=DPI, metadata={"Date": None, "Creator": None})
     return Picture(png.getvalue(), svg.getvalue())
 
 
 def scalp_figure(result: DesignResult, layout: RankedLayout, backdrops: dict[str, Backdrop] | None = None) -> Figure:
     """Four views on one figure, with title, scale bar and legend."""
+    backdrops = {} if backdrops is None else backdrops
+    views = four_views(_normals(result, layout.sensors))
+
+    def draw(axes: Axes, view: View) -> None:
+        if view.name not in backdrops:
+            backdrops[view.name] = paint_backdrop(result.head, result.regions, view)
+        draw_view(axes, result, layout, view, backdrops[view.name])
+
+    return four_panels(views, draw, result.brief.title, _subtitle(result, layout), _legend_entries(result, layout))
+
+
+def four_panels(
+    views: tuple[View, ...],
+    draw: Callable[[Axes, View], None],
+    title: str,
+    subtitle: str,
+    legend: list[tuple[object, str]],
+) -> Figure:
+    """A figure of four views, each drawn by `draw`, with title, scale bar and legend entries (handle, label)."""
     from matplotlib.figure import Figure
 
-    backdrops = {} if backdrops is None else backdrops
-    entries = _legend_entries(result, layout)
-    legend_height = 0.30 + 0.24 * int(np.ceil(len(entries) / 3))  # inches
+    legend_height = 0.30 + 0.24 * int(np.ceil(len(legend) / 3))  # inches
     width, title_height, panel = 9.6, 0.75, 4.7
     height = title_height + 2 * panel + legend_height
     figure = Figure(figsize=(width, height), facecolor="white")
-    views = four_views(_normals(result, layout.sensors))
     for place, view in enumerate(views):
         row, column = divmod(place, 2)
         left = (0.05 + column * (panel + 0.1)) / width
         bottom = (legend_height + (1 - row) * panel) / height
-        axes = figure.add_axes((left, bottom, panel / width, panel / height))
-        if view.name not in backdrops:
-            backdrops[view.name] = paint_backdrop(result.head, result.regions, view)
-        draw_view(axes, result, layout, view, backdrops[view.name])
+        draw(figure.add_axes((left, bottom, panel / width, panel / height)), view)
     draw_scale_bar(figure.axes[0])
-    figure.text(0.02, 1 - 0.28 / height, shortened(result.brief.title, 80), size=13, weight="bold", va="center")
-    figure.text(0.02, 1 - 0.58 / height, _subtitle(result, layout), size=9.5, color="#333333", va="center")
+    figure.text(0.02, 1 - 0.28 / height, shortened(title, 80), size=13, weight="bold", va="center")
+    figure.text(0.02, 1 - 0.58 / height, subtitle, size=9.5, color="#333333", va="center")
     figure.legend(
-        handles=[handle for handle, _ in entries],
-        labels=[label for _, label in entries],
+        handles=[handle for handle, _ in legend],
+        labels=[label for _, label in legend],
         loc="lower center",
         bbox_to_anchor=(0.5, 0.06 / height),
         ncols=3,
@@ -101,16 +120,22 @@ def draw_view(
 ) -> Axes:
     """One view of the head with the layout's sensors; axes in metres of the head."""
     backdrop = paint_backdrop(result.head, result.regions, view) if backdrop is None else backdrop
-    draw_head(axes, result, view, backdrop)
+    draw_head(axes, result.head, view, backdrop)
     draw_candidates(axes, result, view, backdrop)
     draw_sensors(axes, result, layout, view, backdrop)
-    left, right, bottom, top = window(result.head, view)
+    frame_view(axes, result.head, view)
+    return axes
+
+
+def frame_view(axes: Axes, head: Head, view: View) -> Axes:
+    """The same scale in every view, no axes."""
+    left, right, bottom, top = window(head, view)
     axes.set(xlim=(left, right), ylim=(bottom, top), aspect="equal")
     axes.set_axis_off()
     return axes
 
 
-def draw_head(axes: Axes, result: DesignResult, view: View, backdrop: Backdrop) -> Axes:
+def draw_head(axes: Axes, head: Head, view: View, backdrop: Backdrop) -> Axes:
     """The painted head, its outline, the nasion and the names of the picture's ends."""
     from scipy.ndimage import gaussian_filter
 
@@ -121,8 +146,8 @@ def draw_head(axes: Axes, result: DesignResult, view: View, backdrop: Backdrop) 
     y = bottom + (np.arange(rows) + 0.5) * (top - bottom) / rows
     smooth = gaussian_filter(backdrop.inside, 2.0)  # the coverage is all or nothing: smoothed, its edge is a fine line
     axes.contour(x, y, smooth, levels=[0.5], colors="#4A5160", linewidths=1.1, zorder=1)
-    nasion = view.project(result.head.landmarks.nas)
-    if not _behind(nasion[None], backdrop)[0]:
+    nasion = view.project(head.landmarks.nas)
+    if not behind(nasion[None], backdrop)[0]:
         axes.plot(*nasion[:2], marker="^", color="#4A5160", markersize=5, linestyle="none", zorder=2)
     inset = 5e-3
     for name, (spot_x, spot_y), side in zip(view.ends, _end_spots(view, backdrop.extent), "lrcc", strict=True):
@@ -150,7 +175,7 @@ def draw_candidates(axes: Axes, result: DesignResult, view: View, backdrop: Back
     """Faint dots where a sensor could sit, on the near side only."""
     sites = np.unique(result.candidates.site)
     flat = view.project(result.candidates.sites.positions[sites])
-    flat = flat[~_behind(flat, backdrop)]
+    flat = flat[~behind(flat, backdrop)]
     axes.scatter(flat[:, 0], flat[:, 1], s=3.5, color="#3A4250", alpha=0.35, linewidths=0, zorder=3)
     return axes
 
@@ -160,7 +185,7 @@ def draw_sensors(axes: Axes, result: DesignResult, layout: RankedLayout, view: V
     from matplotlib.patches import Circle
 
     flat = view.project(np.stack([row.scalp_position for row in layout.sensors]))
-    far = _behind(flat, backdrop)
+    far = behind(flat, backdrop)
     for row, spot in zip(layout.sensors, flat, strict=True):
         if far[row.number - 1]:
             colour = _kind_colour(result, row)
@@ -235,7 +260,7 @@ def _draw_sensor(axes: Axes, colour: str, row: SensorRow, anchor: np.ndarray, pl
     )
 
 
-def _behind(flat: np.ndarray, backdrop: Backdrop) -> np.ndarray:
+def behind(flat: np.ndarray, backdrop: Backdrop) -> np.ndarray:
     """Which projected points (n, 3) lie on the far side of the scalp; off the picture of the scalp nothing
     does."""
     left, right, bottom, top = backdrop.extent
@@ -261,17 +286,28 @@ def _subtitle(result: DesignResult, layout: RankedLayout) -> str:
     )
 
 
+def region_legend(regions: tuple[Region, ...]) -> list[tuple[object, str]]:
+    """(handle, label) of each region."""
+    from matplotlib.patches import Patch
+
+    return [(Patch(color=region_colour(index)), shortened(region.name, 34)) for index, region in enumerate(regions)]
+
+
+def nasion_legend() -> tuple[object, str]:
+    """(handle, label) of the nasion's mark."""
+    from matplotlib.lines import Line2D
+
+    return Line2D([], [], linestyle="none", marker="^", color="#4A5160", markersize=5), "nasion"
+
+
 def _legend_entries(result: DesignResult, layout: RankedLayout) -> list[tuple[object, str]]:
     """(handle, label) for what the picture shows, and nothing else."""
     from matplotlib.lines import Line2D
-    from matplotlib.patches import Patch
 
     def mark(**style) -> Line2D:
         return Line2D([], [], linestyle="none", **style)
 
-    entries: list[tuple[object, str]] = []
-    for index, region in enumerate(result.regions):
-        entries.append((Patch(color=region_colour(index)), shortened(region.name, 34)))
+    entries = region_legend(result.regions)
     shown = {}
     for row in layout.sensors:
         shown.setdefault(row.kind, row)
@@ -291,5 +327,4 @@ def _legend_entries(result: DesignResult, layout: RankedLayout) -> list[tuple[ob
         entries.append((arrow, "sensitive axis"))
         ring = {"markerfacecolor": "none", "markeredgecolor": "#333333", "markersize": 9}
         entries.append((mark(marker="o", **ring), "outer ring: axis along the line of sight"))
-    entries.append((mark(marker="^", color="#4A5160", markersize=5), "nasion"))
-    return entries
+    return [*entries, nasion_legend()]

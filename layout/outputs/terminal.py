@@ -15,27 +15,28 @@ if TYPE_CHECKING:
 
 def print_result(result: DesignResult, console: Console) -> None:
     """Ranked layouts, baselines, the first layout's sensors, noise figures, notes. Fits 80 columns."""
-    _say(console, result.brief.title, style="bold")
+    say(console, result.brief.title, style="bold")
     console.print(_ranked(result))
-    _say(console, bound_sentence(result))
+    say(console, bound_sentence(result))
     if result.stopped_by_clock:
-        _say(console, CLOCK_SENTENCE, style="yellow")
+        say(console, CLOCK_SENTENCE, style="yellow")
     console.print(_baselines(result))
-    _say(console, f"Sensors of layout 1: {_sensors(result.layouts[0])}")
+    say(console, f"Sensors of layout 1: {_sensors(result.layouts[0])}")
     if result.figures_of_noise:
-        console.print(_noise(result))
+        console.print(noise_table(result.figures_of_noise))
     for note in result.notes:
-        _say(console, f"- {note}")
+        say(console, f"- {note}")
 
 
-def _say(console: Console, text: str, style: str = "") -> None:
+def say(console: Console, text: str, style: str = "") -> None:
     """Print words that may hold anything: no markup, no control characters."""
     from rich.text import Text
 
     console.print(Text(one_line(text), style=style))
 
 
-def _table(title: str) -> Table:
+def new_table(title: str) -> Table:
+    """An empty table in the house's form."""
     from rich import box
     from rich.table import Table
 
@@ -43,7 +44,7 @@ def _table(title: str) -> Table:
 
 
 def _ranked(result: DesignResult) -> Table:
-    table = _table("Ranked layouts")
+    table = new_table("Ranked layouts")
     for heading in ("rank", result.unit, "bound", "gap %"):
         table.add_column(heading, justify="right", no_wrap=True)
     table.add_column("proven", no_wrap=True)
@@ -68,7 +69,7 @@ def _baselines(result: DesignResult) -> Table:
     from rich.text import Text
 
     count = len(result.layouts[0].chosen)
-    table = _table(f"Without a search, with the same {count} sensors")
+    table = new_table(f"Without a search, with the same {count} sensors")
     table.add_column("baseline", overflow="fold")
     table.add_column(result.unit, justify="right", no_wrap=True)
     table.add_column("% of best", justify="right", no_wrap=True)
@@ -79,14 +80,15 @@ def _baselines(result: DesignResult) -> Table:
     return table
 
 
-def _noise(result: DesignResult) -> Table:
+def noise_table(figures: dict[str, tuple[float, str, str]]) -> Table:
+    """Label -> (value, unit, expected band), as in DesignResult."""
     from rich.text import Text
 
-    table = _table("Noise and model figures")
+    table = new_table("Noise and model figures")
     table.add_column("quantity", overflow="fold")
     table.add_column("value", justify="right", no_wrap=True)
     table.add_column("expected band", overflow="fold")
-    for name, (value, unit, band) in result.figures_of_noise.items():
+    for name, (value, unit, band) in figures.items():
         number = f"{significant(value, 4, '-')} {one_line(unit)}"
         table.add_row(Text(one_line(name)), Text(number), Text(one_line(band)))
     return table

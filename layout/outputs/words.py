@@ -11,8 +11,10 @@ CLOCK_SENTENCE = (
 
 
 def even_spread_text(layout: RankedLayout) -> str:
-    """The size of the even spread that does as well, or that even the largest tried does not."""
+    """The size of the even spread that does as well, or that even the largest tried does not; "-" where none was."""
     count = layout.equals_even_spread_of
+    if count is None and layout.even_spread_limit == 0:
+        return "-"
     return f"more than {layout.even_spread_limit}" if count is None else str(count)
 
 

@@ -1,5 +1,5 @@
 """Writes the output folder: everything into a hidden sibling first, then one rename. The one place that opens
-files."""
+files for writing."""
 
 from __future__ import annotations
 
@@ -63,14 +63,70 @@ def write_result(result: DesignResult, out_dir: str | os.PathLike, audit: bool =
         _put_in_place(fresh, out)
     except BaseException as problem:
         shutil.rmtree(fresh, ignore_errors=True)
-        for folder in reversed(made):
-            with contextlib.suppress(OSError):  # someone else has put something there meanwhile
-                folder.rmdir()
+        _remove_empty(made)
         if isinstance(problem, OSError):
             reason = problem.strerror or str(problem)
             raise FileError(f"the output folder {str(out)!r} cannot be written: {reason}") from problem
         raise
     return out
+
+
+def write_picture(picture: Picture, png: str | os.PathLike) -> Path:
+    """Write a picture to the file `png` and, beside it, the same name ending in .svg; return the first's path.
+
+    Both are replaced where they exist; neither is ever half-written. Raises FileError for another ending or where the
+    system refuses.
+    """
+    place = check_picture_file(png)
+    made: list[Path] = []
+    unfinished: list[tuple[Path, Path]] = []
+    try:
+        _make_parents(place.parent, made)
+        for path, content in ((place, picture.png), (place.with_suffix(".svg"), picture.svg)):
+            unfinished.append((path.parent / f".{path.name}-{secrets.token_hex(4)}.partial", path))
+            _write(unfinished[-1][0], content)
+        for fresh, path in unfinished:
+            fresh.replace(path)
+    except BaseException as problem:
+        for fresh, _ in unfinished:
+            fresh.unlink(missing_ok=True)
+        _remove_empty(made)
+        if isinstance(problem, OSError):
+            reason = problem.strerror or str(problem)
+            raise FileError(f"the picture {str(png)!r} cannot be written: {reason}") from problem
+        raise
+    return place
+
+
+def check_picture_file(png: str | os.PathLike) -> Path:
+    """The absolute path of a picture's file. Raises FileError where its name does not end in .png or it is a folder."""
+    place = Path(png).absolute()
+    if place.suffix != ".png":
+        raise FileError(f"the picture must be a file whose name ends in .png, but {str(png)!r} was given")
+    if place.is_dir():
+        raise FileError(f"the picture must be a file, but {str(png)!r} is a folder")
+    return place
+
+
+def write_new_text(text: str, path: str | os.PathLike) -> Path:
+    """Write a text file that must not exist yet, whole or not at all. Raises FileError where it exists or cannot be."""
+    place = Path(path)
+    try:
+        file = place.open("x", encoding="utf-8", newline="\n")
+    except FileExistsError:
+        raise FileError(f"the file {str(path)!r} must not exist yet: it is not overwritten") from None
+    except (OSError, ValueError) as problem:
+        reason = getattr(problem, "strerror", None) or str(problem)
+        raise FileError(f"the file {str(path)!r} cannot be written: {reason}") from problem
+    try:
+        with file:
+            file.write(text)
+    except BaseException as problem:
+        place.unlink(missing_ok=True)
+        if isinstance(problem, OSError):
+            raise FileError(f"the file {str(path)!r} cannot be written: {problem.strerror}") from problem
+        raise
+    return place
 
 
 def check_out_dir(out_dir: str | os.PathLike) -> Path:
@@ -123,6 +179,12 @@ def _make_parents(folder: Path, made: list[Path]) -> None:
     for place in reversed(missing):
         place.mkdir()
         made.append(place)
+
+
+def _remove_empty(made: list[Path]) -> None:
+    for folder in reversed(made):
+        with contextlib.suppress(OSError):  # someone else has put something there meanwhile
+            folder.rmdir()
 
 
 def _fill(folder: Path, result: DesignResult, audit: bool) -> None:

@@ -7,8 +7,8 @@ from dataclasses import dataclass
 import numpy as np
 
 from layout.anatomy.head import Head
-from layout.physics.lead_field import LeadField, compute_lead_field, eye_field
-from layout.physics.sphere_model import SphereModel
+from layout.physics.lead_field import LeadField, compute_lead_field, eye_field, moved_onto_spheres
+from layout.physics.sphere_model import Displacements, SphereModel
 from layout.sensing.candidates import Candidates
 
 
@@ -25,10 +25,6 @@ class Channels:
     def __len__(self) -> int:
         return len(self.positions)
 
-    def part(self, rows: slice) -> Channels:
-        """Some of the channels."""
-        return Channels(self.positions[rows], self.axes[rows], self.is_electrode[rows], self.normals[rows])
-
     def lead_field(self, sphere: SphereModel, head: Head, sources: np.ndarray, free: bool) -> LeadField:
         """Lead field to the numbered sources of the head's cortex, along their normals or free."""
         normals = None if free else head.cortex.normals[sources]
@@ -41,6 +37,12 @@ class Channels:
             self.normals,
             head.cortex.positions[sources],
             normals,
+        )
+
+    def displacements(self, sphere: SphereModel, head: Head) -> Displacements:
+        """How far the quick model moves these channels and the head's whole cortex."""
+        return moved_onto_spheres(
+            sphere, head, self.positions, self.axes, self.is_electrode, self.normals, head.cortex.positions
         )
 
     def eye_gain(self, sphere: SphereModel, head: Head) -> np.ndarray:
@@ -63,3 +65,8 @@ def electrodes_at(positions: np.ndarray) -> Channels:
 def normal_magnetometers_above(positions: np.ndarray, normals: np.ndarray, gap: float) -> Channels:
     """One magnetometer along the scalp normal, `gap` [m] above each scalp point (n, 3) [m]."""
     return Channels(positions + gap * normals, normals, np.zeros(len(positions), dtype=bool), normals)
+
+
+def joined(*parts: Channels) -> Channels:
+    """The channels of all parts, one after the other."""
+    return Channels(*(np.concatenate([vars(part)[name] for part in parts]) for name in vars(parts[0])))

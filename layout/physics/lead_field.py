@@ -79,6 +79,26 @@ def compute_lead_field(
     return LeadField(gain, report)
 
 
+def moved_onto_spheres(
+    model: SphereModel,
+    head: Head,
+    positions: np.ndarray,
+    axes: np.ndarray,
+    is_electrode: np.ndarray,
+    normals: np.ndarray,
+    source_positions: np.ndarray,
+) -> Displacements:
+    """How far the model moves these channels and sources; arguments as in `compute_lead_field`."""
+    electrodes, points, _ = _map_channels(model, head, positions, axes, is_electrode, normals)
+    sources = map_sources(model, head, source_positions, None)
+    return displacements(
+        (source_positions, sources.positions),
+        (positions[is_electrode], electrodes),
+        (positions[~is_electrode], points),
+        sources.clipped,
+    )
+
+
 def eye_field(
     model: SphereModel,
     head: Head,

@@ -5,7 +5,7 @@ import json
 import math
 
 import numpy as np
-from conftest import HOSTILE_NAME, HOSTILE_TITLE, make_result
+from made_result import HOSTILE_NAME, HOSTILE_TITLE, make_result
 
 from layout.outputs.ranking import ranking_json
 

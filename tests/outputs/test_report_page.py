@@ -7,7 +7,7 @@ import subprocess
 from html.parser import HTMLParser
 
 import pytest
-from conftest import HOSTILE_TITLE
+from made_result import HOSTILE_TITLE
 
 from layout.outputs.cautions import CAUTIONS
 from layout.outputs.report import report_html

@@ -7,7 +7,7 @@ import xml.etree.ElementTree as ET
 import matplotlib
 import numpy as np
 import pytest
-from conftest import make_result
+from made_result import make_result
 from matplotlib.colors import to_rgb
 
 from layout.outputs.backdrop import paint_backdrop, region_colour

@@ -6,7 +6,7 @@ import zipfile
 
 import numpy as np
 import pytest
-from conftest import make_result
+from made_result import make_result
 
 from layout.errors import FileError
 from layout.outputs import writer
