@@ -14,6 +14,7 @@ from layout.anatomy.patches import cortex_patches, patches_of
 from layout.anatomy.positions import F3_CONVENTION, FAMILIES, family_names, standard_positions
 from layout.anatomy.regions import region_strengths, select_region
 from layout.anatomy.scalp_points import normals_at, project
+from layout.brief.default_heads import DEFAULT_CONDUCTIVITIES
 from layout.brief.objects import Brief
 from layout.engine.feasible import Feasible
 from layout.engine.information import Conditioned, information
@@ -28,11 +29,12 @@ from layout.noise.sensor import sensor_noise
 from layout.outputs.check import Check
 from layout.outputs.result import Baseline, DesignResult, RankedLayout, SensorRow
 from layout.physics.channels import candidate_channels
-from layout.physics.sphere_model import Displacements, SphereModel, fit_sphere_model
+from layout.physics.sphere_model import Displacements, MappedCortex, SphereModel, fit_sphere_model, map_cortex
 from layout.sensing.candidates import Candidates
 from layout.sensing.kept import kept_candidates, named_reference
 from layout.sensing.lay_out import lay_candidates
-from layout.units import MM
+from layout.sensing.overlap import boxes_overlap
+from layout.units import MM, NAM
 
 Progress = Callable[[str], None]
 
@@ -50,8 +52,13 @@ class Study:
     standard: dict[str, np.ndarray]
     candidates: Candidates
     regions: tuple[Region, ...]
-    sphere: SphereModel
+    cortex: MappedCortex
     feasible: Feasible
+
+    @property
+    def sphere(self) -> SphereModel:
+        """The quick model of the head, with the brief's conductivities."""
+        return self.cortex.sphere
 
 
 @dataclass(frozen=True)
@@ -82,8 +89,8 @@ def lay_out_study(brief: Brief, progress: Progress = silent) -> Study:
         keep=kept_candidates(brief, candidates),
     )
     _check_room(brief, feasible)
-    sphere = fit_sphere_model(head, np.array(brief.head.conductivities))
-    return Study(brief, head, standard, candidates, regions, sphere, feasible)
+    cortex = map_cortex(fit_sphere_model(head, np.array(brief.head.conductivities)), head)
+    return Study(brief, head, standard, candidates, regions, cortex, feasible)
 
 
 def _check_room(brief: Brief, feasible: Feasible) -> None:
@@ -105,29 +112,30 @@ def build_problem(study: Study, progress: Progress = silent) -> Problem:
     progress("lead fields of the regions")
     targets, columns, start = [], {}, 0
     for region in study.regions:
-        field = channels.lead_field(study.sphere, head, region.members, free=region.free_orientation)
-        targets.append(_region_columns(region, field.gain, head.cortex.areas[region.members]))
+        field = channels.lead_field(study.cortex, region.members, free=region.free_orientation)
+        targets.append(_region_columns(region, field.gain, region.areas))
         columns[region.name] = slice(start, start + targets[-1].shape[1])
         start += targets[-1].shape[1]
     progress("background activity")
     labels = _patches(study)
     calibration = _calibrated(study, labels)
-    left_out = np.zeros(len(head.cortex), dtype=bool)
+    background = head.cortex.areas.copy()
     if not brief.noise.regions_in_background:
-        left_out[np.concatenate([region.members for region in study.regions])] = True
+        for region in study.regions:
+            background[region.members] -= region.areas
+        background = np.maximum(background, 0.0)
     noise: NoiseModel = assemble_noise(
         channels,
-        study.sphere,
-        head,
+        study.cortex,
         brief.noise,
         calibration,
         labels,
-        left_out,
+        background,
         sensor_noise(head, brief, study.candidates, study.standard),
     )
     target, nuisance, offset = noise.rows(np.hstack(targets))
     model = LinearModel(target, nuisance, offset, study.candidates.candidate_of_channel)
-    return Problem(model, columns, calibration, channels.displacements(study.sphere, head))
+    return Problem(model, columns, calibration, channels.displacements(study.cortex))
 
 
 def examine(brief: Brief, progress: Progress = silent) -> Check:
@@ -145,9 +153,13 @@ def examine(brief: Brief, progress: Progress = silent) -> Check:
         kept=study.feasible.keep,
         reference=named_reference(brief, study.candidates),
         sphere=study.sphere,
-        displacements=candidate_channels(study.candidates).displacements(study.sphere, study.head),
-        figures_of_noise=calibration.figures(brief.noise.bandwidth),
+        displacements=candidate_channels(study.candidates).displacements(study.cortex),
+        figures_of_noise=calibration.figures(brief.noise.bandwidth, _has_magnetometers(brief)),
     )
+
+
+def _has_magnetometers(brief: Brief) -> bool:
+    return any(entry.kind == "magnetometer" for entry in brief.stock)
 
 
 def _region_columns(region: Region, gain: np.ndarray, areas: np.ndarray) -> np.ndarray:
@@ -176,7 +188,8 @@ def _calibrated(study: Study, labels: np.ndarray) -> Calibration:
     head = study.head
     sites = {name: study.standard[name] for name in family_names("10-20") if name in study.standard}
     normals = normals_at(head.scalp, project(head.scalp, np.array(list(sites.values()))))
-    return calibrate(head, study.sphere, study.brief.noise, labels, sites, normals)
+    nominal = np.array(DEFAULT_CONDUCTIVITIES[len(study.sphere.conductivities)])
+    return calibrate(study.cortex, nominal, study.brief.noise, labels, sites, normals)
 
 
 def design(brief: Brief, progress: Progress = silent) -> DesignResult:
@@ -202,7 +215,8 @@ def design(brief: Brief, progress: Progress = silent) -> DesignResult:
         (family, np.array([study.standard[n] for n in family_names(family) if n in study.standard]))
         for family in FAMILIES
     )
-    baselines = yardsticks(model, feasible, points, site, families, search.seed, progress)
+    axis_names = study.candidates.axis_name
+    baselines = yardsticks(model, feasible, points, site, families, search.seed, progress, axis_names)
     best = ranking.layouts[0]
     known_spreads: dict[int, float] = {}
     layouts = []
@@ -228,8 +242,9 @@ def design(brief: Brief, progress: Progress = silent) -> DesignResult:
         candidates=study.candidates,
         head=study.head,
         regions=study.regions,
+        bound_from=_bound_from(ranking),
         notes=_notes(study, problem, ranking),
-        figures_of_noise=problem.calibration.figures(brief.noise.bandwidth),
+        figures_of_noise=problem.calibration.figures(brief.noise.bandwidth, _has_magnetometers(brief)),
         stopped_by_clock=ranking.stopped_by_clock,
         search_effort={
             "starts": ranking.starts,
@@ -277,7 +292,20 @@ def _described(
         per_region_bits=per_region,
         equals_even_spread_of=equal,
         even_spread_limit=largest,
+        housings_meet=_housings_meet(study, layout.chosen),
     )
+
+
+def _housings_meet(study: Study, chosen: np.ndarray) -> int | None:
+    """How many pairs of chosen magnetometers have housings that share space; None without magnetometers."""
+    stock, candidates = study.brief.stock, study.candidates
+    housed = [one for one in chosen if stock[candidates.kind[one]].kind == "magnetometer"]
+    if not housed:
+        return None
+    poses = candidates.housing_pose[housed]
+    sizes = np.array([stock[kind].housing for kind in candidates.kind[housed]])
+    first, second = np.triu_indices(len(housed), 1)
+    return int(boxes_overlap(poses[first], sizes[first], poses[second], sizes[second]).sum())
 
 
 def _one_region(model: LinearModel, columns: slice) -> LinearModel:
@@ -327,28 +355,66 @@ def _sensor_row(study: Study, candidate: int, number: int, marginal: float, is_r
     )
 
 
-def _notes(study: Study, problem: Problem, ranking: Ranking) -> tuple[str, ...]:
-    brief = study.brief
-    notes = [*study.candidates.notes, *study.head.notes]
+def _bound_from(ranking: Ranking) -> str:
+    """Which of the three ways gave the first layout's bound."""
+    relaxed = min(one.value for one in (ranking.root, ranking.by_rank) if one is not None)
+    if ranking.proof is not None and ranking.proof.bound < relaxed:
+        return "branch and bound"
+    if ranking.by_rank is not None and ranking.by_rank.value < ranking.root.value:
+        return "the rank-aware relaxation"
+    return "the relaxation, which lets fractions of sensors be placed"
+
+
+def _notes(study: Study, problem: Problem, ranking: Ranking) -> dict[str, tuple[str, ...]]:
+    notes = {
+        "Sites": (*study.candidates.notes, *_axis_notes(study.brief), f"Standard positions: {F3_CONVENTION}."),
+        "Head and model": study.head.notes,
+        "Strengths and noise": _strength_notes(study),
+        "Ranking": _ranking_notes(ranking),
+    }
     if study.head.sphere is None:
-        notes.append(f"Quick physical model: layered spheres, {problem.displacements.summary()}.")
-    notes.append(
-        f"Ranked layouts differ from each other by at least {ranking.differ_by} sensors; a rank's bound covers all "
-        "layouts that differ by as much from every earlier rank, among these candidates and under this model."
+        notes["Head and model"] += (f"Quick physical model of layered spheres; {problem.displacements.summary()}.",)
+    return notes
+
+
+def _axis_notes(brief: Brief) -> tuple[str, ...]:
+    if not any(entry.kind == "magnetometer" and entry.axes != "normal" for entry in brief.stock):
+        return ()
+    return (
+        "Axes of a magnetometer: normal points out of the head along its housing, tangent1 towards the front as nearly "
+        "as the scalp allows, tangent2 (normal x tangent1) to the left on top of the head, down on its left side and "
+        "up on its right side.",
     )
-    notes.append(
-        "Bits depend on the assumed strengths ("
-        + ", ".join(
-            f"{region.name} {one.moment * 1e9:g} nAm" for region, one in zip(study.regions, brief.regions, strict=True)
-        )
-        + "); compare layouts by ratios."
+
+
+def _strength_notes(study: Study) -> tuple[str, ...]:
+    brief = study.brief
+    strengths = ", ".join(
+        f"{region.name} {one.moment / NAM:g} nAm" for region, one in zip(study.regions, brief.regions, strict=True)
     )
+    notes = [f"Bits depend on the assumed strengths ({strengths}); compare layouts by ratios."]
     if any(entry.kind == "electrode" for entry in brief.stock):
         notes.append(
             "The reference is one of the counted electrodes; calling another one the reference changes nothing, and "
             "the ground is not counted."
         )
-    notes.append(f"Standard positions: {F3_CONVENTION}.")
+    return tuple(notes)
+
+
+def _ranking_notes(ranking: Ranking) -> tuple[str, ...]:
+    if len(ranking.layouts) == 1:
+        return ()
+    sensors = "1 sensor" if ranking.differ_by == 1 else f"{ranking.differ_by} sensors"
+    notes = [
+        f"Ranked layouts differ from each other by at least {sensors}; a rank's bound covers all layouts that differ "
+        "by as much from every earlier rank, among these candidates and under this model."
+    ]
+    bounds = [layout.bound for layout in ranking.layouts]
+    if len(set(bounds)) < len(bounds):
+        notes.append(
+            "Ranks share a bound where leaving out the layouts near the earlier ranks did not lower it: a bound for "
+            "all layouts holds for the remaining ones too."
+        )
     return tuple(notes)
 
 

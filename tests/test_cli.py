@@ -239,6 +239,7 @@ def test_design_prints_the_tables_and_writes_the_folder(runs):
             "scalp.png",
             "scalp.svg",
             "sub-plan_electrodes.tsv",
+            "sub-plan_electrodes.json",
             "sub-plan_coordsystem.json",
         }
 
@@ -270,7 +271,7 @@ def test_same_brief_same_bytes(runs, tmp_path):
     (tmp_path / "study.toml").write_text(SMALL_BRIEF)
     assert invoke("design", tmp_path / "study.toml", "--out", tmp_path / "again", "--audit").exit_code == 0
     again = {path.relative_to(tmp_path / "again"): path for path in (tmp_path / "again").rglob("*") if path.is_file()}
-    assert len(again) == 14
+    assert len(again) == 17
     for name, path in again.items():
         assert path.read_bytes() == (out / name).read_bytes(), name
 

@@ -1,9 +1,11 @@
 """The pipeline from a brief to a design: what it reports agrees with itself and with computations apart from it."""
 
 from dataclasses import replace
+from itertools import combinations
 
 import numpy as np
 import pytest
+from scipy.optimize import linprog
 from studies import BAND, FRONTAL, HANDS, SPHERE, TEMPLATE, TWO_REGIONS, brief_of, coils, cups, problem_of, study_of
 
 from layout.anatomy.head import Region
@@ -38,6 +40,27 @@ def bits(audit, chosen, wanted=slice(None)):
     return 0.5 * (np.linalg.slogdet(noise + wanted_part)[1] - np.linalg.slogdet(noise)[1]) / np.log(2)
 
 
+def housings_sharing_space(result, layout):
+    """Pairs of housings that hold a common ball, by a linear programme for each pair; None without magnetometers."""
+    stock = {entry.name: entry for entry in result.brief.stock}
+    boxes = []
+    for sensor in layout.sensors:
+        if sensor.kind_type == "magnetometer":
+            pose = result.candidates.housing_pose[sensor.candidate]
+            width, depth, length = stock[sensor.kind].housing
+            sides = np.vstack([pose[:3, :3].T, -pose[:3, :3].T])  # outward normals of the six faces
+            reach = np.array([width / 2, depth / 2, length, width / 2, depth / 2, 0.0])
+            boxes.append((sides, sides @ pose[:3, 3] + reach))
+    if not boxes:
+        return None
+    count = 0
+    for (sides, reach), (others, limits) in combinations(boxes, 2):
+        rows = np.column_stack([np.vstack([sides, others]), np.ones(12)])
+        ball = linprog([0, 0, 0, -1], rows, np.concatenate([reach, limits]), bounds=[(None, None)] * 4)
+        count += ball.x[3] > 1e-7  # its radius [m]
+    return count
+
+
 def check_design(tables):
     """Everything a result says about its layouts, recomputed from the audit's arrays."""
     result, study, problem = design(brief_of(*tables)), study_of(*tables), problem_of(*tables)
@@ -66,6 +89,7 @@ def check_design(tables):
         for earlier in result.layouts[:row]:
             same = len(set(study.candidates.site[chosen]) & set(study.candidates.site[list(earlier.chosen)]))
             assert len(chosen) - same >= result.search_effort["differ by"]
+        assert layout.housings_meet == housings_sharing_space(result, layout)
     values = [layout.value for layout in result.layouts]
     assert values == sorted(values, reverse=True)
     for baseline in result.baselines:
@@ -81,6 +105,10 @@ def test_electrodes_on_a_sphere():
     assert result.layouts[0].cost == 9
     assert [sensor.role for sensor in result.layouts[0].sensors].count("reference") == 1
     assert result.layouts[0].equals_even_spread_of >= 6
+    assert result.baselines[0].note == ""
+    assert list(result.notes) == ["Sites", "Head and model", "Strengths and noise", "Ranking"]
+    assert not any("tangent" in note for note in result.notes["Sites"])
+    assert "at least 1 sensor;" in result.notes["Ranking"][0]
 
 
 @pytest.mark.slow
@@ -88,12 +116,14 @@ def test_both_kinds_on_a_sphere():
     result = check_design(BOTH)
     assert result.layouts[0].cost == 64
     assert [sensor.kind for sensor in result.layouts[0].sensors] == ["cup"] * 4 + ["coil"] * 3
+    assert "every magnetometer's axis normal+tangent1" in result.baselines[0].note
 
 
 @pytest.mark.slow
 def test_magnetometers_on_the_template():
     result = check_design(HELMET)
     assert len(result.candidates) >= 900
+    assert result.layouts[0].housings_meet > 0
     assert "background field 20 mm off the scalp, rms" in result.figures_of_noise
 
 
@@ -131,7 +161,7 @@ def region_rows(study, problem, name):
     """A region's columns in volts or tesla, and the plain lead field of its sources."""
     region = next(one for one in study.regions if one.name == name)
     channels = candidate_channels(study.candidates)
-    gain = channels.lead_field(study.sphere, study.head, region.members, free=region.free_orientation).gain
+    gain = channels.lead_field(study.cortex, region.members, free=region.free_orientation).gain
     scale = 1 / problem.model.offset  # electrodes: the offset's row is 1 over the contact noise
     return problem.model.target[:, problem.target_columns[name]] * scale[:, None], gain, region
 
@@ -140,7 +170,7 @@ def test_incoherent_strengths_share_the_moment_by_area():
     """The covariance of the region, summed source by source."""
     study, problem = study_of(*EEG), problem_of(*EEG)
     columns, gain, region = region_rows(study, problem, "left")
-    areas = study.head.cortex.areas[region.members]
+    areas = region.areas
     expected = np.zeros((len(gain), len(gain)))
     for j, area in enumerate(areas):
         expected += (10e-9) ** 2 * area / areas.sum() * gain[:, j] @ gain[:, j].T / 3
@@ -152,7 +182,7 @@ def test_net_moment_of_a_region_has_the_rms_asked_for(coherent):
     """Simulated moments, summed without regard to direction; coherent ones all share one factor."""
     rng = np.random.default_rng(11)
     areas = rng.uniform(1e-6, 9e-6, 70)
-    region = Region("any", np.arange(70), 25e-9, coherent, False, np.zeros(3))
+    region = Region("any", np.arange(70), areas, 25e-9, coherent, False, np.zeros(3))
     sees_the_sum = _region_columns(region, np.ones((1, 70)), areas)
     net = (sees_the_sum @ rng.standard_normal((sees_the_sum.shape[1], 400_000)))[0]
     assert np.sqrt((net**2).mean()) == pytest.approx(25e-9, rel=0.01, abs=0)
@@ -165,7 +195,7 @@ def test_coherent_column_on_the_template():
     study, problem = study_of(*tables), problem_of(*tables)
     columns, gain, region = region_rows(study, problem, "right hand")
     assert (region.coherent, columns.shape[1]) == (True, 1)
-    areas = study.head.cortex.areas[region.members]
+    areas = region.areas
     expected = sum(gain[:, j] * areas[j] for j in range(len(areas))) / sum(areas) * 10e-9
     np.testing.assert_allclose(columns[:, 0], expected, rtol=1e-9, atol=1e-9 * np.abs(expected).max())
 

@@ -89,10 +89,12 @@ class Head:
 
 @dataclass(frozen=True)
 class Region:
-    """Sources of interest. members (n,) indices into the cortex; moment [A·m] rms net of the region."""
+    """Sources of interest. members (n,): indices into the cortex; areas (n,) [m²]: the part of each that is inside;
+    moment [A·m]: rms of the region's net moment."""
 
     name: str
     members: np.ndarray
+    areas: np.ndarray
     moment: float
     coherent: bool
     free_orientation: bool

@@ -14,7 +14,10 @@ SIDES = {"left": (-1,), "right": (1,), "both": (-1, 1)}
 
 
 def select_region(head: Head, brief: RegionBrief) -> Region:
-    """The sources within the ball's straight radius, in the head's own size, on the side asked for.
+    """The cortex within the ball's straight radius, in the head's own size, on the side asked for.
+
+    A source at the rim counts with the part of its area that lies inside, taken as a square cut across by the ball's
+    surface: with sources simply in or out, a finer mesh would change the region by whole sources.
 
     Raises BriefError where the centre is in MNI152 coordinates and the head has none, where cortical normals
     are asked of a head without them, or where no source lies inside.
@@ -33,8 +36,9 @@ def select_region(head: Head, brief: RegionBrief) -> Region:
         centre = apply(head.mni_to_head, centre)
     eligible = np.flatnonzero(np.isin(head.cortex.side, SIDES[brief.side]))
     distance = np.linalg.norm(head.cortex.positions[eligible] - centre, axis=1)
-    members = eligible[distance <= brief.radius]
-    if len(members) == 0:
+    areas = head.cortex.areas[eligible]
+    inside = np.clip(0.5 + (brief.radius - distance) / np.sqrt(areas), 0.0, 1.0)
+    if not (distance <= brief.radius).any():
         side = "either side" if brief.side == "both" else f"the {brief.side} side"
         raise BriefError(
             f"{where}: radius_mm must reach at least one source of the cortex; the nearest on {side} is"
@@ -42,7 +46,8 @@ def select_region(head: Head, brief: RegionBrief) -> Region:
         )
     return Region(
         name=brief.name,
-        members=members,
+        members=eligible[inside > 0],
+        areas=(inside * areas)[inside > 0],
         moment=brief.moment,
         coherent=brief.coherent,
         free_orientation=brief.orientation == "free",

@@ -151,7 +151,7 @@ class SearchBrief:
     starts: int = 20
     ranked: int = 3
     differ_by: int = 0
-    proof_parts: int = 300
+    proof_parts: int = 100
     time_allowance: float | None = None  # [s]; None: no clock
 
 

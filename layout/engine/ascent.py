@@ -93,7 +93,7 @@ def best_of_quadratic(
         ahead = trial + (momentum - 1.0) / grown * (trial - point)
         moved = np.abs(trial - point).max()
         point, momentum = trial, grown
-        if moved < 1e-7:
+        if moved < 1e-6:
             break
     return point
 

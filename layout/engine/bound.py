@@ -11,7 +11,7 @@ import numpy as np
 from layout.engine.ascent import newton_ascent
 from layout.engine.feasible import Feasible
 from layout.engine.model import ChannelTable, LinearModel
-from layout.engine.rank_aware import PooledRankAware, RankAwareRelaxation, rank_aware_in_source_space
+from layout.engine.rank_aware import PooledRankAware, RankAwareRelaxation, flat_column, rank_aware_in_source_space
 from layout.engine.relaxation import PooledRelaxation, value_and_gradient
 from layout.engine.remaining import Remaining
 
@@ -134,10 +134,13 @@ def tighten_by_rank(
 ) -> Tangent | None:
     """The same with the rank-aware relaxation of what is `left`; None where it cannot be below the plain one."""
     channels = most_channels(left, feasible)
-    if left.target is None or channels >= left.target.shape[1] or channels == 0:
+    if channels >= left.target.shape[1] or channels == 0:
         return None
     nuisance = left.nuisance_gram[:-1, :-1].copy()
     nuisance[np.diag_indices_from(nuisance)] -= 1.0
+    if left.offset.any():
+        column = flat_column(left.offset)
+        nuisance += np.outer(column, column)
     whole = RankAwareRelaxation(left.target, nuisance, left.candidate_of_channel, channels)
 
     def relax(pool: np.ndarray) -> PooledRankAware:

@@ -11,7 +11,7 @@ import numpy as np
 
 from layout.engine.bound import Tangent, most_channels, tighten_by_rank, tighten_to
 from layout.engine.feasible import Feasible
-from layout.engine.information import Conditioned
+from layout.engine.information import BITS, Conditioned
 from layout.engine.model import LinearModel
 from layout.engine.rank_aware import compressed
 from layout.engine.remaining import Remaining, remaining
@@ -91,9 +91,9 @@ def prove(
         part = _Part(model, feasible, target, node)
         if part.infeasible:
             continue
-        if part.size <= 1:
+        if part.finishes:
             found, found_value = part.finish()
-            if found_value > best_value:
+            if found is not None and found_value > best_value:
                 best, best_value = found, found_value
             continue
         tangent = part.bounded(cut)
@@ -108,13 +108,28 @@ def prove(
         if limit <= cut:
             dropped = max(dropped, limit)
             continue
-        for child_chosen, child_free, child_weights in part.children(tangent, cut):
+        children, fixed_away = part.children(tangent, cut)
+        dropped = max(dropped, fixed_away)
+        for child_chosen, child_free, child_weights in children:
             number += 1
             heapq.heappush(heap, _Node(-limit, number, limit, child_chosen, child_free, child_weights))
     open_limit = -heap[0].key if heap else 0.0
     bound = max(open_limit, dropped, best_value)
     left = len(heap) if open_limit > best_value * (1 + tolerance) else 0
     return Proof(min(bound, root_limit), best, best_value, nodes, left, stopped)
+
+
+def _pairs(left: Remaining) -> np.ndarray:
+    """Information of every pair of single-channel candidates (n, n) [bits], by 2 x 2 determinants; no offset."""
+    logs = []
+    for gram in (left.both_gram, left.nuisance_gram):
+        rows = left.channels[:, 0]
+        block = gram[np.ix_(rows, rows)]
+        own = np.diag(block)
+        determinant = own[:, None] * own - block**2
+        np.fill_diagonal(determinant, 1.0)
+        logs.append(np.log(determinant))
+    return BITS * (logs[0] - logs[1])
 
 
 class _Part:
@@ -132,17 +147,44 @@ class _Part:
         self.size = self._rules.size
         self._left: Remaining = remaining(model, node.chosen, node.candidates, rows)
 
-    def finish(self) -> tuple[np.ndarray, float]:
-        """The best layout of a part in which at most one candidate is still to be chosen."""
+    @property
+    def finishes(self) -> bool:
+        """Whether so little is left to choose that all of it can be tried."""
+        pairs = self.size == 2 and self._left.channels.shape[1] == 1 and not self._left.offset.any()
+        return self.size <= 1 or pairs
+
+    def finish(self) -> tuple[np.ndarray | None, float]:
+        """The best layout of a part that `finishes`, and its information; (None, -inf) where no layout is allowed."""
         if self.size == 0:
-            return np.sort(self._node.chosen), self._left.value
-        gains = np.where(
-            self._rules.addable(np.zeros(0, dtype=int)),
-            Conditioned(self._left, np.zeros(0, dtype=int)).additions(),
-            -np.inf,
-        )
-        last = int(np.argmax(gains))
-        return np.sort(np.append(self._node.chosen, self._node.candidates[last])), self._left.value + float(gains[last])
+            allowed = self._feasible.allows(self._node.chosen)
+            return (np.sort(self._node.chosen), self._left.value) if allowed else (None, -np.inf)
+        nothing = np.zeros(0, dtype=int)
+        usable = self._rules.addable(nothing)
+        if self.size == 1:
+            if self._rules.keep:
+                usable &= np.isin(np.arange(self._rules.n_candidates), self._rules.keep)
+            table = np.where(usable, Conditioned(self._left, nothing).additions(), -np.inf)
+        else:
+            table = np.where(self._allowed_pairs(usable), _pairs(self._left), -np.inf)
+        if not np.isfinite(table).any():
+            return None, -np.inf
+        last = np.unravel_index(int(np.argmax(table)), table.shape)
+        layout = np.append(self._node.chosen, self._node.candidates[list(last)])
+        return np.sort(layout), self._left.value + float(table[last])
+
+    def _allowed_pairs(self, usable: np.ndarray) -> np.ndarray:
+        """(n, n) bool: pairs of the remaining candidates that fill the layout within the rules."""
+        rules = self._rules
+        allowed = usable[:, None] & usable[None, :] & ~rules.conflicts
+        np.fill_diagonal(allowed, False)
+        same = rules.group[:, None] == rules.group[None, :]
+        allowed &= ~same | (rules.counts >= 2)[rules.group][:, None]
+        kept = np.isin(np.arange(rules.n_candidates), rules.keep).astype(int)
+        allowed &= kept[:, None] + kept[None, :] >= len(rules.keep)
+        for members, limit in rules.at_most:
+            inside = np.isin(np.arange(rules.n_candidates), members).astype(int)
+            allowed &= inside[:, None] + inside[None, :] <= limit
+        return allowed
 
     def bounded(self, cut: float) -> Tangent | None:
         """A tangent good enough to drop the part at `cut` or to know that none is; None where no layout is left.
@@ -175,16 +217,20 @@ class _Part:
                 chosen = np.append(chosen, candidate)
         return chosen
 
-    def children(self, tangent: Tangent, cut: float) -> list[tuple[np.ndarray, np.ndarray, np.ndarray]]:
+    def children(self, tangent: Tangent, cut: float) -> tuple[list[tuple[np.ndarray, np.ndarray, np.ndarray]], float]:
         """(chosen, candidates, weights) of each part that this one splits into, after fixing by reduced cost.
 
         The split is on the place of largest weight: one child for each of its live members, without the ones before it,
-        and a last child without any of them.
+        and a last child without any of them. Second, the highest limit [bits] of the layouts that fixing gives up, all
+        of them within the cut (-inf where it gives up none).
         """
         slack = tangent.limit - cut
         _, loss_in, loss_out = self._rules.losses(tangent.gradient)
         inside = np.flatnonzero(loss_out > slack)
         alive = loss_in <= slack
+        fixed_away = loss_in[~alive].min(initial=np.inf)
+        if len(inside):
+            fixed_away = min(fixed_away, loss_out[inside].min())
         chosen = np.concatenate([self._node.chosen, self._node.candidates[inside]])
         alive[inside] = False
         if len(inside):
@@ -198,7 +244,7 @@ class _Part:
             free = alive & self._feasible.addable(taken)[self._node.candidates]
             out.append((taken, self._node.candidates[free], tangent.weights[free]))
         out.append((chosen, self._node.candidates[alive], tangent.weights[alive]))
-        return out
+        return out, tangent.limit - fixed_away
 
     def _split_on(self, alive: np.ndarray, tangent: Tangent) -> np.ndarray:
         """Live members of the clique of largest weight, heaviest first; one candidate where no clique has weight."""
@@ -210,6 +256,7 @@ class _Part:
         best, members = weights[heaviest], np.array([heaviest])
         for clique in self._rules.cliques:
             total = weights[clique].sum()
-            if total > best + 1e-9:
-                best, members = total, clique[weights[clique] > LIVE]
+            live = clique[weights[clique] > LIVE]
+            if total > best + 1e-9 and len(live):
+                best, members = total, live
         return members[np.argsort(-weights[members], kind="stable")]

@@ -18,6 +18,7 @@ from layout.engine.information import BITS
 from layout.engine.model import LinearModel
 from layout.engine.relaxation import PooledRelaxation
 
+FLAT = 1e8  # variance of the offset in units of a channel's own noise; adds under 1e-6 bits to a limit
 RESIDUAL_BITS = 1e-5  # what compressing the target may add to the limit
 
 
@@ -77,6 +78,8 @@ def rank_aware_in_source_space(
     """
     per_channel = weights[model.candidate_of_channel]
     nuisance = model.nuisance
+    if model.offset.any():
+        nuisance = np.column_stack([nuisance, flat_column(model.offset)])
     heavy_target, heavy_nuisance = per_channel[:, None] * target, per_channel[:, None] * nuisance
     factor = cho_factor(np.eye(nuisance.shape[1]) + nuisance.T @ heavy_nuisance, lower=True)
     known = cho_solve(factor, heavy_nuisance.T @ target)
@@ -86,6 +89,14 @@ def rank_aware_in_source_space(
     value, price = _value_and_prices(strength, directions, target - nuisance @ known, channels)
     gradient = np.bincount(model.candidate_of_channel, weights=price, minlength=model.n_candidates)
     return BITS * value, BITS * gradient
+
+
+def flat_column(offset: np.ndarray) -> np.ndarray:
+    """The offset (n_channels,) as a nuisance column of large but finite variance, for a valid limit.
+
+    The information with the finite variance is never below that with the flat prior, as the offset is better known.
+    """
+    return offset * np.sqrt(FLAT / np.mean(offset[offset != 0] ** 2))
 
 
 def _value_and_prices(

@@ -19,7 +19,7 @@ class Remaining(ChannelTable):
     nuisance_gram: covariances conditioned on the chosen channels (ChannelTable's padding kept), so that the information
     of chosen and S together is value + the information of S under these. Once a chosen channel sees the offset, what it
     leaves unknown is part of both covariances and offset is zero. target (n_channels, p): rows A
-    with both - nuisance = A Aᵀ, None while the offset is still free.
+    with both - nuisance = A Aᵀ.
     """
 
     candidates: np.ndarray
@@ -28,7 +28,7 @@ class Remaining(ChannelTable):
     nuisance_gram: np.ndarray
     offset: np.ndarray
     candidate_of_channel: np.ndarray
-    target: np.ndarray | None
+    target: np.ndarray
 
 
 def remaining(model: LinearModel, chosen: np.ndarray, candidates: np.ndarray, target: np.ndarray) -> Remaining:
@@ -42,7 +42,7 @@ def remaining(model: LinearModel, chosen: np.ndarray, candidates: np.ndarray, ta
     seen = bool((model.offset[rows] != 0).any())
     grams = [_conditioned(gram, rows, left, model.offset, seen) for gram in (model.both_gram, model.nuisance_gram)]
     offset = np.zeros(len(left)) if seen else model.offset[left]
-    rest = None if offset.any() else _target_given(model, rows, left, target, seen)
+    rest = _target_given(model, rows, left, target, seen)
     return Remaining(candidates, information(model, chosen), *grams, offset, owner, rest)
 
 

@@ -33,7 +33,7 @@ class Yardstick:
 
 
 def first_at_site(site: np.ndarray, kind: np.ndarray, entry: int) -> tuple[np.ndarray, np.ndarray]:
-    """(sites, candidates) of one stock entry: every site it can use and its first candidate there (the normal axis)."""
+    """(sites, candidates) of one stock entry: every site it can use, its first candidate (axis option) there."""
     members = np.flatnonzero(kind == entry)
     sites, first = np.unique(site[members], return_index=True)
     return sites, members[first]
@@ -140,17 +140,26 @@ def yardsticks(
     families: tuple[tuple[str, np.ndarray], ...],
     seed: int,
     progress: Callable[[str], None] = lambda doing: None,
+    axis_names: tuple[str, ...] = (),
 ) -> tuple[Yardstick, ...]:
-    """Even spread, standard positions, best single channels, median of 200 random layouts, at the same counts."""
+    """Even spread, standard positions, best single channels, median of 200 random layouts, at the same counts.
+
+    axis_names: of each candidate, "" for electrodes; the first two take a site's first option and say which it is.
+    """
     progress("baselines")
 
-    def of(name: str, chosen: np.ndarray, note: str = "") -> Yardstick:
+    def of(name: str, chosen: np.ndarray, *notes: str) -> Yardstick:
         broken = "" if feasible.allows(chosen) else "breaks a rule of the brief, shown all the same"
-        return Yardstick(name, information(model, chosen), chosen, ", ".join(filter(None, [note, broken])))
+        return Yardstick(name, information(model, chosen), chosen, ", ".join(filter(None, [*notes, broken])))
 
-    even = of("even spread", evenly(points, site, feasible, feasible.counts))
+    def axis_used(chosen: np.ndarray) -> str:
+        used = dict.fromkeys(axis_names[candidate] for candidate in chosen if axis_names and axis_names[candidate])
+        return f"every magnetometer's axis {' or '.join(used)}, a site's first option" if used else ""
+
+    spread = evenly(points, site, feasible, feasible.counts)
+    even = of("even spread", spread, axis_used(spread))
     chosen, note = standard_subset(points, site, feasible, families)
-    standard = () if chosen is None else (of("standard positions", chosen, note),)
+    standard = () if chosen is None else (of("standard positions", chosen, note, axis_used(chosen)),)
     singles = of("best single channels", best_singles(model, feasible))
     rng = np.random.default_rng([seed, RANDOM_LAYOUTS])
     draws = [information(model, random_set(feasible, rng)) for _ in range(RANDOM_LAYOUTS)]

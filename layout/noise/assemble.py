@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import numpy as np
 
-from layout.anatomy.head import Head
 from layout.brief.objects import NoiseBrief
 from layout.noise.background import background_columns
 from layout.noise.calibration import Calibration
@@ -12,28 +11,27 @@ from layout.noise.eyes import eye_columns
 from layout.noise.model import NoiseModel, noise_model
 from layout.noise.surroundings import surroundings_columns
 from layout.physics.channels import Channels
-from layout.physics.sphere_model import SphereModel
+from layout.physics.sphere_model import MappedCortex
 
 
 def assemble_noise(
     channels: Channels,
-    sphere: SphereModel,
-    head: Head,
+    cortex: MappedCortex,
     noise: NoiseBrief,
     calibration: Calibration,
     labels: np.ndarray,
-    left_out: np.ndarray,
+    areas: np.ndarray,
     sensor_sd: np.ndarray,
 ) -> NoiseModel:
     """Sensor noise, background brain, eyes and surroundings of the channels, averages taken into account.
 
-    labels (n_sources,): patches; left_out (n_sources,) bool: sources of the regions, unless they count as background;
+    labels (n_sources,): patches; areas (n_sources,) [m²]: of background at each source;
     sensor_sd (n_channels,) [V or T] of a single epoch.
     """
     parts = {
-        "background": calibration.density * background_columns(channels, sphere, head, labels, left_out),
+        "background": calibration.density * background_columns(channels, cortex, labels, areas),
         "surroundings": surroundings_columns(channels.positions, channels.axes, noise.field_rms, noise.gradient_rms),
     }
     if calibration.eye:
-        parts["eyes"] = eye_columns(channels.eye_gain(sphere, head), calibration.eye)
+        parts["eyes"] = eye_columns(channels.eye_gain(cortex.sphere, cortex.head), calibration.eye)
     return noise_model(sensor_sd, parts, channels.is_electrode, noise.averages)

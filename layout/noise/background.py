@@ -2,36 +2,35 @@
 
 from __future__ import annotations
 
+from itertools import pairwise
+
 import numpy as np
 
-from layout.anatomy.head import Head
 from layout.physics.channels import Channels
-from layout.physics.sphere_model import SphereModel
+from layout.physics.sphere_model import MappedCortex
 
 GAIN_AT_ONCE = 16_000_000  # numbers: keeps the lead field to all sources out of memory at once
 
 
-def background_columns(
-    channels: Channels, sphere: SphereModel, head: Head, labels: np.ndarray, left_out: np.ndarray
-) -> np.ndarray:
+def background_columns(channels: Channels, cortex: MappedCortex, labels: np.ndarray, areas: np.ndarray) -> np.ndarray:
     """Response of the channels to each patch at a moment density of 1 A/m (n_channels, n_columns) [V or T].
 
-    labels (n_sources,): the sources' patches; left_out (n_sources,) bool: sources that are not background. Moments
+    labels (n_sources,): the sources' patches; areas (n_sources,) [m²]: of background at each. Moments
     follow the cortical normals; on a head without them each patch has three independent components of a third of the
     variance. Columns are in the order of the patches' numbers.
     """
-    free = not head.normal_orientation
+    free = not cortex.head.normal_orientation
     parts = []
     for some in _whole_patches(labels, GAIN_AT_ONCE // (len(channels) * (3 if free else 1))):
-        gain = channels.lead_field(sphere, head, some, free=free).gain
-        parts.append(patch_columns(gain, head.cortex.areas[some], labels[some], left_out[some]))
+        gain = channels.lead_field(cortex, some, free=free).gain
+        parts.append(patch_columns(gain, areas[some], labels[some]))
     return np.hstack(parts)
 
 
 def _whole_patches(labels: np.ndarray, at_once: int) -> list[np.ndarray]:
     """The sources in order of their patch, cut between patches into pieces of about at_once.
 
-    Cut by sources and not by channels: placing a source on the spheres costs more than its lead field.
+    Cut by sources and not by channels: a piece then holds whole patches, and each patch is summed at once.
     """
     order = np.argsort(labels, kind="stable")
     starts = np.flatnonzero(np.diff(labels[order], prepend=-1))
@@ -39,14 +38,16 @@ def _whole_patches(labels: np.ndarray, at_once: int) -> list[np.ndarray]:
     return np.split(order, starts[new_piece][1:])
 
 
-def patch_columns(gain: np.ndarray, areas: np.ndarray, labels: np.ndarray, left_out: np.ndarray) -> np.ndarray:
+def patch_columns(gain: np.ndarray, areas: np.ndarray, labels: np.ndarray) -> np.ndarray:
     """The same from a given gain: (n_channels, n_sources) along normals, (n_channels, n_sources, 3) free."""
-    weight = np.where(left_out, 0.0, areas)
-    order = np.argsort(labels, kind="stable")
-    bounds = np.searchsorted(labels[order], np.unique(labels))
+    if (np.diff(labels) < 0).any():
+        order = np.argsort(labels, kind="stable")
+        gain, areas, labels = gain[:, order], areas[order], labels[order]
+    bounds = np.flatnonzero(np.diff(labels, prepend=-1, append=labels.max() + 1))
+    pieces = [slice(*ends) for ends in pairwise(bounds)]
     if gain.ndim == 2:
-        return np.add.reduceat((gain * weight)[:, order], bounds, axis=1)
-    columns = np.add.reduceat((gain * weight[:, None])[:, order], bounds, axis=1) / np.sqrt(3.0)
+        return np.stack([gain[:, patch] @ areas[patch] for patch in pieces], axis=1)
+    columns = np.stack([areas[patch] @ gain[:, patch] for patch in pieces], axis=1) / np.sqrt(3.0)
     return columns.reshape(len(gain), -1)
 
 

@@ -39,26 +39,25 @@ def region_colour(index: int) -> str:
 
 
 def window(head: Head, view: View) -> tuple[float, float, float, float]:
-    """Left, right, bottom, top [m] of a square around the head: equally large in every view, so that all
-    share a scale."""
-    sizes = np.ptp(head.scalp.vertices, axis=0)
-    half = sizes.max() / 2 + MARGIN
+    """Left, right, bottom, top [m] around the head: equally wide in every view, so that all share a scale, and
+    as high as the view needs."""
     flat = view.project(head.scalp.vertices)
-    centre = (flat.min(axis=0) + flat.max(axis=0)) / 2
-    return centre[0] - half, centre[0] + half, centre[1] - half, centre[1] + half
+    centre, high = (flat.min(axis=0) + flat.max(axis=0)) / 2, np.ptp(flat[:, 1]) / 2 + MARGIN
+    half = np.ptp(head.scalp.vertices, axis=0).max() / 2 + MARGIN
+    return centre[0] - half, centre[0] + half, centre[1] - high, centre[1] + high
 
 
 def paint_backdrop(head: Head, regions: tuple[Region, ...], view: View) -> Backdrop:
     """The head in this view as a picture; regions in full colour, faint where cortex hides them."""
     extent = window(head, view)
-    side = round((extent[1] - extent[0]) * PIXELS_PER_METRE)
-    frame = (extent, (side, side))
+    shape = (round((extent[3] - extent[2]) * PIXELS_PER_METRE), round((extent[1] - extent[0]) * PIXELS_PER_METRE))
+    frame = (extent, shape)
 
     face, weights, _ = _see(head.cortex.positions, head.cortex.faces, view, frame)
     normals = _vertex_normals(head.cortex.positions, head.cortex.faces)
     normal = _blend(view.project(normals), head.cortex.faces, face, weights)
     light = np.clip(normal @ (LIGHT / np.linalg.norm(LIGHT)), 0, 1)
-    image = np.ones((side, side, 3))
+    image = np.ones((*shape, 3))
     image[face >= 0] = (CORTEX_GREY * (0.72 + 0.28 * light[..., None]))[face >= 0]
 
     members = np.zeros((len(head.cortex), len(regions)))
@@ -86,11 +85,10 @@ def paint_backdrop(head: Head, regions: tuple[Region, ...], view: View) -> Backd
 
 
 def _see(vertices, faces, view, frame):
-    (left, right, bottom, _), shape = frame
+    (left, right, bottom, top), shape = frame
     flat = view.project(vertices)
-    pixel = (right - left) / shape[1]
-    columns = (flat[:, 0] - left) / pixel - 0.5
-    rows = (flat[:, 1] - bottom) / pixel - 0.5
+    columns = (flat[:, 0] - left) / (right - left) * shape[1] - 0.5
+    rows = (flat[:, 1] - bottom) / (top - bottom) * shape[0] - 0.5
     return seen_faces(np.stack([columns, rows, flat[:, 2]], axis=1), faces, shape)
 
 

@@ -1,4 +1,4 @@
-"""The electrodes of one layout as a pair of BIDS files (Brain Imaging Data Structure 1.11, EEG)."""
+"""The electrodes of one layout as BIDS files (Brain Imaging Data Structure 1.11, EEG)."""
 
 from __future__ import annotations
 
@@ -9,6 +9,7 @@ from layout.outputs.result import DesignResult, RankedLayout, SensorRow
 from layout.units import MM
 
 ELECTRODES_TSV = "sub-plan_electrodes.tsv"
+ELECTRODES_JSON = "sub-plan_electrodes.json"
 COORDSYSTEM_JSON = "sub-plan_coordsystem.json"
 
 FRAME = (
@@ -23,7 +24,7 @@ def electrodes_of(layout: RankedLayout) -> tuple[SensorRow, ...]:
 
 
 def electrodes_tsv(layout: RankedLayout) -> str:
-    """Columns name, x, y, z [mm] and the three recommended ones, which a plan cannot know (n/a).
+    """Columns name, x, y, z [mm], the three recommended ones, which a plan cannot know (n/a), and the role.
 
     `name` is the index of the file: the site's name, or the candidate's where two electrodes share a site's
     name.
@@ -32,11 +33,22 @@ def electrodes_tsv(layout: RankedLayout) -> str:
     labels = [one_line(row.site) for row in rows]
     if len(set(labels)) < len(labels):
         labels = [one_line(row.name) for row in rows]
-    lines = ["name\tx\ty\tz\ttype\tmaterial\timpedance"]
+    lines = ["name\tx\ty\tz\ttype\tmaterial\timpedance\trole"]
     for label, row in zip(labels, rows, strict=True):
         place = [fixed(value / MM, 2, missing="n/a") for value in row.position]
-        lines.append("\t".join([label or "n/a", *place, "n/a", "n/a", "n/a"]))
+        lines.append("\t".join([label or "n/a", *place, "n/a", "n/a", "n/a", row.role or "n/a"]))
     return "\n".join(lines) + "\n"
+
+
+def electrodes_json() -> str:
+    """Defines the columns of `electrodes_tsv` that the specification does not."""
+    content = {
+        "role": {
+            "Description": "What the plan uses this electrode for beyond recording.",
+            "Levels": {"reference": "the electrode to connect as reference; any other would give the same information"},
+        }
+    }
+    return json.dumps(content, indent=2, ensure_ascii=False) + "\n"
 
 
 def coordsystem_json(result: DesignResult) -> str:

@@ -11,6 +11,7 @@ from scipy.spatial import cKDTree
 from layout.anatomy.head import Head, Region
 from layout.anatomy.head_size import head_size
 from layout.brief.objects import Brief
+from layout.noise.calibration import Figure
 from layout.outputs.backdrop import Backdrop, paint_backdrop
 from layout.outputs.figure import (
     KIND_COLOURS,
@@ -25,7 +26,7 @@ from layout.outputs.figure import (
     rendered,
 )
 from layout.outputs.plain import fixed, one_line, shortened
-from layout.outputs.terminal import new_table, noise_table, say
+from layout.outputs.terminal import new_table, print_figures, print_notes, say
 from layout.outputs.views import View, four_views
 from layout.physics.nearest_point import nearest_on_surface
 from layout.physics.sphere_model import Displacements, SphereModel
@@ -60,7 +61,7 @@ class Check:
     reference: int | None
     sphere: SphereModel
     displacements: Displacements
-    figures_of_noise: dict[str, tuple[float, str, str]]
+    figures_of_noise: dict[str, Figure]
 
 
 def print_check(check: Check, console: Console) -> None:
@@ -77,9 +78,8 @@ def print_check(check: Check, console: Console) -> None:
     console.print(_stock(check))
     for line in _rules(check):
         say(console, line)
-    console.print(noise_table(check.figures_of_noise))
-    for note in (*check.candidates.notes, *check.head.notes):
-        say(console, f"- {note}")
+    print_figures(check.figures_of_noise, console)
+    print_notes({"Sites": check.candidates.notes, "Head and model": check.head.notes}, console)
 
 
 def _sphere_text(check: Check) -> str:
@@ -106,11 +106,11 @@ def _regions(check: Check) -> Table:
     tree = cKDTree(np.array([check.standard[name] for name in labels]))
     for region in check.regions:
         points = check.head.cortex.positions[region.members]
-        away, nearest = tree.query(np.average(points, axis=0, weights=check.head.cortex.areas[region.members]))
+        away, nearest = tree.query(np.average(points, axis=0, weights=region.areas))
         table.add_row(
             Text(one_line(region.name)),
             str(len(region.members)),
-            fixed(check.head.cortex.areas[region.members].sum() / CM2, 1),
+            fixed(region.areas.sum() / CM2, 1),
             ", ".join(fixed(value / MM, 0) for value in region.centre),
             fixed(nearest_on_surface(check.head.scalp, points).inside_depth.min() / MM, 1),
             f"{labels[nearest]}, {away / MM:.0f} mm off",

@@ -23,6 +23,7 @@ if TYPE_CHECKING:
     from matplotlib.figure import Figure
 
 DPI = 150
+LEGEND_COLUMNS = 2
 DISC_RADIUS = 4.6e-3  # m on the head's own scale
 ARROW = 11.5e-3  # m, an axis lying in the picture's plane
 HEAD_ON = 0.87  # cosine beyond which an axis has no arrow worth drawing
@@ -89,26 +90,32 @@ def four_panels(
     """A figure of four views, each drawn by `draw`, with title, scale bar and legend entries (handle, label)."""
     from matplotlib.figure import Figure
 
-    legend_height = 0.30 + 0.24 * int(np.ceil(len(legend) / 3))  # inches
-    width, title_height, panel = 9.6, 0.75, 4.7
-    height = title_height + 2 * panel + legend_height
-    figure = Figure(figsize=(width, height), facecolor="white")
-    for place, view in enumerate(views):
+    legend_height = 0.35 + 0.27 * int(np.ceil(len(legend) / LEGEND_COLUMNS))  # inches
+    width, title_height, panel = 9.6, 0.9, 4.7
+    figure = Figure(figsize=(width, width), facecolor="white")
+    panels = [figure.add_axes((0, 0, 1, 1), label=view.name) for view in views]
+    for axes, view in zip(panels, views, strict=True):
+        draw(axes, view)
+    heights = [panel * np.ptp(axes.get_ylim()) / np.ptp(axes.get_xlim()) for axes in panels]
+    rows = [max(heights[:2]), max(heights[2:])]
+    height = title_height + sum(rows) + legend_height
+    figure.set_size_inches(width, height)
+    for place, (axes, own) in enumerate(zip(panels, heights, strict=True)):
         row, column = divmod(place, 2)
         left = (0.05 + column * (panel + 0.1)) / width
-        bottom = (legend_height + (1 - row) * panel) / height
-        draw(figure.add_axes((left, bottom, panel / width, panel / height)), view)
+        bottom = legend_height + sum(rows[row:]) - own  # the tops of a row are level
+        axes.set_position((left, bottom / height, panel / width, own / height))
     draw_scale_bar(figure.axes[0])
-    figure.text(0.02, 1 - 0.28 / height, shortened(title, 80), size=13, weight="bold", va="center")
-    figure.text(0.02, 1 - 0.58 / height, subtitle, size=9.5, color="#333333", va="center")
+    figure.text(0.01, 1 - 0.31 / height, shortened(title, 72), size=15, weight="bold", va="center")
+    figure.text(0.01, 1 - 0.68 / height, subtitle, size=12, color="#333333", va="center")
     figure.legend(
         handles=[handle for handle, _ in legend],
         labels=[label for _, label in legend],
         loc="lower center",
         bbox_to_anchor=(0.5, 0.06 / height),
-        ncols=3,
+        ncols=LEGEND_COLUMNS,
         frameon=False,
-        fontsize=8.5,
+        fontsize=11,
         handletextpad=0.6,
         columnspacing=2.0,
     )
@@ -152,8 +159,8 @@ def draw_head(axes: Axes, head: Head, view: View, backdrop: Backdrop) -> Axes:
     inset = 5e-3
     for name, (spot_x, spot_y), side in zip(view.ends, _end_spots(view, backdrop.extent), "lrcc", strict=True):
         align = {"l": "left", "r": "right", "c": "center"}[side]
-        axes.text(spot_x, spot_y, name, size=9, color="#4A5160", ha=align, va="center")
-    axes.text(left + 2e-3, top - inset, view.name, size=9.5, weight="bold", color="#333333", ha="left", va="center")
+        axes.text(spot_x, spot_y, name, size=11, color="#4A5160", ha=align, va="center")
+    axes.text(left + 2e-3, top - inset, view.name, size=11.5, weight="bold", color="#333333", ha="left", va="center")
     return axes
 
 
@@ -162,7 +169,7 @@ def _end_spots(view: View, extent: tuple[float, float, float, float]) -> tuple[t
     side is narrow; single letters at half height."""
     left, right, bottom, top = extent
     middle, inset = (left + right) / 2, 5e-3
-    sideways = bottom + 18e-3 if len(view.ends[0]) > 1 else (bottom + top) / 2
+    sideways = bottom + inset if len(view.ends[0]) > 1 else (bottom + top) / 2
     return (
         (left + inset, sideways),
         (right - inset, sideways),
@@ -214,7 +221,7 @@ def draw_scale_bar(axes: Axes, length: float = 50 * MM) -> Axes:
     bottom, _ = axes.get_ylim()
     start, height = left + 0.02 * (right - left), bottom + 0.035 * (right - left)
     axes.plot([start, start + length], [height, height], color="#333333", linewidth=2.2, solid_capstyle="butt")
-    axes.text(start + length / 2, height + 2e-3, f"{length / MM:.0f} mm", size=8.5, ha="center", va="bottom")
+    axes.text(start + length / 2, height + 2e-3, f"{length / MM:.0f} mm", size=11, ha="center", va="bottom")
     return axes
 
 
@@ -313,7 +320,9 @@ def _legend_entries(result: DesignResult, layout: RankedLayout) -> list[tuple[ob
         shown.setdefault(row.kind, row)
     for kind, row in shown.items():
         colour = _kind_colour(result, row)
-        entries.append((mark(marker="o", color=colour, markersize=8), f"{shortened(kind, 22)} ({row.kind_type})"))
+        name = shortened(kind, 30)
+        label = name if row.kind_type in name else f"{name} ({row.kind_type})"
+        entries.append((mark(marker="o", color=colour, markersize=8), label))
     for row in layout.sensors:
         if row.role == "reference":
             colour = _kind_colour(result, row)

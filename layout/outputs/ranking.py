@@ -24,6 +24,7 @@ def ranking_json(result: DesignResult) -> str:
         "goal": result.goal,
         "unit": result.unit,
         "bound": result.bound,
+        "bound_from": result.bound_from,
         "root_bound": result.root_bound,
         "proven_within_percent": result.proven_within,
         "stopped_by_clock": result.stopped_by_clock,
@@ -45,8 +46,19 @@ def ranking_json(result: DesignResult) -> str:
         "layouts": [_layout(layout) for layout in result.layouts],
         "baselines": [_baseline(result, base) for base in result.baselines],
         "noise_figures": [
-            {"name": name, "value": value, "unit": unit, "band": band}
-            for name, (value, unit, band) in result.figures_of_noise.items()
+            {
+                "name": name,
+                "value": figure.value,
+                "unit": figure.unit,
+                "low": figure.low,
+                "high": figure.high,
+                "outside": figure.outside,
+                "judged": figure.judged,
+                "band": figure.band,
+                "source": figure.source,
+                "remark": figure.remark,
+            }
+            for name, figure in result.figures_of_noise.items()
         ],
         "search_effort": result.search_effort,
         "notes": result.notes,
@@ -64,6 +76,7 @@ def _layout(layout: RankedLayout) -> dict[str, Any]:
         "proven": layout.proven,
         "cost": layout.cost,
         "moved": layout.moved,
+        "housings_meet": layout.housings_meet,
         "per_region": layout.per_region_bits,
         "equals_even_spread_of": layout.equals_even_spread_of,
         "even_spread_limit": layout.even_spread_limit,

@@ -12,7 +12,18 @@ from layout.outputs.cautions import CAUTIONS
 from layout.outputs.figure import Picture
 from layout.outputs.plain import fixed, one_line, rounded_up, significant
 from layout.outputs.result import DesignResult, RankedLayout, SensorRow
-from layout.outputs.words import CLOCK_SENTENCE, bound_sentence, even_spread_text
+from layout.outputs.words import (
+    CLOCK_SENTENCE,
+    HOUSINGS_COLUMN,
+    RANKED_COLUMNS,
+    bound_sentence,
+    effort_sentence,
+    even_spread_text,
+    figure_text,
+    housings_sentence,
+    meets_housings,
+    nearest_text,
+)
 from layout.units import MM, NAM
 
 TEMPLATE = "report.html.j2"
@@ -52,6 +63,11 @@ def report_html(result: DesignResult, pictures: Sequence[Picture]) -> str:
             for index, region in enumerate(result.regions)
         ],
         bound_sentence=bound_sentence(result),
+        effort_sentence=effort_sentence(result),
+        housings_sentence=housings_sentence(result),
+        meets_housings=meets_housings(result),
+        columns=RANKED_COLUMNS + (f"; {HOUSINGS_COLUMN}" if meets_housings(result) else ""),
+        figures=[(name, figure, figure_text(figure)) for name, figure in result.figures_of_noise.items()],
         clock_sentence=CLOCK_SENTENCE if result.stopped_by_clock else "",
         cautions=CAUTIONS,
     )
@@ -72,7 +88,7 @@ def _sensor(row: SensorRow) -> dict[str, Any]:
     return {
         "row": row,
         "position_mm": [value / MM for value in row.position],
-        "offset_mm": row.nearest_offset / MM,
+        "nearest": nearest_text(row),
         "landmarks_mm": [value / MM for value in row.landmark_distance],
         "axes": [] if is_electrode else row.axes.tolist(),
     }

@@ -9,6 +9,7 @@ import numpy as np
 
 from layout.anatomy.head import Head, Region
 from layout.brief.objects import Brief
+from layout.noise.calibration import Figure
 from layout.sensing.candidates import Candidates
 
 SCHEMA = 1  # of ranking.json
@@ -52,7 +53,8 @@ class RankedLayout:
     ranks. moved: sensors by which it differs from the nearest earlier rank, None for rank 1. per_region_bits:
     region name to the information about that region alone. equals_even_spread_of: the smallest even spread
     that reaches this value, None when an even spread of `even_spread_limit` sensors (the largest tried) is
-    still below.
+    still below. cost: sum of the prices. housings_meet: pairs of chosen magnetometers whose housings would share
+    space, None without magnetometers.
     """
 
     rank: int
@@ -67,6 +69,7 @@ class RankedLayout:
     per_region_bits: dict[str, float]
     equals_even_spread_of: int | None
     even_spread_limit: int
+    housings_meet: int | None = None
 
 
 @dataclass(frozen=True)
@@ -86,10 +89,10 @@ class DesignResult:
     """A finished design.
 
     bound: of rank 1, as printed; root_bound: of the relaxation at `weights` (n_candidates,). proven_within:
-    the gap [per cent] up to which a layout counts as proven. figures_of_noise: label -> (value in the unit
-    that follows, unit, the band it should lie in, or "" where there is none); also how far positions were
-    displaced. search_effort: label -> count, nothing that depends on the clock. notes: assumptions and
-    weaknesses, one sentence each. audit: arrays of audit.npz by name.
+    the gap [per cent] up to which a layout counts as proven. bound_from: what gave the first layout's bound,
+    in words. figures_of_noise: label -> figure beside its band. search_effort: label -> count, nothing that
+    depends on the clock. notes: heading -> assumptions and weaknesses, one sentence each. audit: arrays of
+    audit.npz by name.
     """
 
     brief: Brief
@@ -104,8 +107,9 @@ class DesignResult:
     candidates: Candidates
     head: Head
     regions: tuple[Region, ...]
-    notes: tuple[str, ...] = ()
-    figures_of_noise: dict[str, tuple[float, str, str]] = field(default_factory=dict)
+    bound_from: str = ""
+    notes: dict[str, tuple[str, ...]] = field(default_factory=dict)
+    figures_of_noise: dict[str, Figure] = field(default_factory=dict)
     stopped_by_clock: bool = False
     search_effort: dict[str, int | float | str] = field(default_factory=dict)
     audit: dict[str, np.ndarray] = field(default_factory=dict)

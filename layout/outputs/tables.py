@@ -41,7 +41,7 @@ SENSOR_COLUMNS = (
 
 def sensors_csv(layout: RankedLayout) -> str:
     """One row per channel; the channels of one sensor share its number and its marginal bits. Axes empty
-    where none."""
+    where none. columns.json defines the columns."""
     rows = []
     for row in layout.sensors:
         for channel, axis in enumerate(row.axes, start=1):
@@ -81,7 +81,7 @@ def ranking_csv(result: DesignResult) -> str:
         "proven",
         "percent_of_best",
     )
-    columns += ("cost", "moved", "equals_even_spread_of", "even_spread_limit", "sensors", "note")
+    columns += ("cost", "moved", "housings_meet", "equals_even_spread_of", "even_spread_limit", "sensors", "note")
     best = result.layouts[0].value
     rows = []
     for layout in result.layouts:
@@ -97,6 +97,7 @@ def ranking_csv(result: DesignResult) -> str:
                 significant(100 * layout.value / best, 6) if best else "",
                 significant(layout.cost, 9),
                 "" if layout.moved is None else str(layout.moved),
+                "" if layout.housings_meet is None else str(layout.housings_meet),
                 "" if layout.equals_even_spread_of is None else str(layout.equals_even_spread_of),
                 str(layout.even_spread_limit),
                 _names(result, layout.chosen),
@@ -110,6 +111,7 @@ def ranking_csv(result: DesignResult) -> str:
             "",
             "",
             significant(base.percent_of_best, 6),
+            "",
             "",
             "",
             "",

@@ -2,12 +2,19 @@
 
 from __future__ import annotations
 
-from layout.outputs.plain import fixed, rounded_up
-from layout.outputs.result import DesignResult, RankedLayout
+from layout.noise.calibration import Figure
+from layout.outputs.plain import fixed, one_line, rounded_up
+from layout.outputs.result import DesignResult, RankedLayout, SensorRow
+from layout.units import MM
 
 CLOCK_SENTENCE = (
     "The search was stopped by its time allowance: another run may end elsewhere; the bounds hold all the same."
 )
+RANKED_COLUMNS = (
+    "price: sum of the prices; sensors moved: against the nearest earlier rank; equals even spread of: how many "
+    "sensors an even spread needs for as many bits"
+)
+HOUSINGS_COLUMN = "housings meet: pairs of housings that would share space"
 
 
 def even_spread_text(layout: RankedLayout) -> str:
@@ -27,6 +34,52 @@ def bound_sentence(result: DesignResult) -> str:
         f"No allowed layout of these candidates passes {bound} {result.unit} under this model: "
         f"layout 1 is within {gap} %"
     )
+    if result.bound_from:
+        claim += f" (bound from {result.bound_from})"
     if best.proven:
         return f"{claim}, and so proven to {within} %."
     return f"{claim}. Better layouts may exist inside that gap (proven would mean {within} % or less)."
+
+
+def effort_sentence(result: DesignResult) -> str:
+    """How much was searched for the layouts and for the bound; "" where nothing was counted."""
+    effort = result.search_effort
+    if not effort:
+        return ""
+    parts = effort["parts examined"]
+    proof = f"{_number(parts, 'part')} examined, {effort['parts left open']} left open" if parts else "not used"
+    return (
+        f"Search: {_number(effort['starts'], 'start')}, {_number(effort['swaps'], 'swap')}. "
+        f"Bound: {_number(effort['bound rounds'], 'round')} of tightening; branch and bound: {proof}."
+    )
+
+
+def housings_sentence(result: DesignResult) -> str:
+    """In which layouts housings meet; "" where there are none to meet."""
+    meeting = [layout for layout in result.layouts if layout.housings_meet]
+    if not meeting:
+        return ""
+    where = ", ".join(f"{one.housings_meet} in layout {one.rank}" for one in meeting)
+    return f"Pairs of housings that meet: {where}; a larger spacing_mm keeps them apart."
+
+
+def figure_text(figure: Figure) -> str:
+    """Where a figure lies and what to know about it, "" where there is nothing to say."""
+    outside = f"outside the band, {figure.outside} it" if figure.outside else ""
+    if not figure.judged:
+        outside = f"{figure.outside} the band" if figure.outside else ""
+    return one_line("; ".join(filter(None, [outside, figure.remark])))
+
+
+def nearest_text(row: SensorRow) -> str:
+    """The nearest standard position and how far it is from the sensor's place on the scalp."""
+    return f"{one_line(row.nearest_name)} {fixed(row.nearest_offset / MM, 1)} mm"
+
+
+def meets_housings(result: DesignResult) -> bool:
+    """Whether the layouts have housings that could meet."""
+    return any(layout.housings_meet is not None for layout in result.layouts)
+
+
+def _number(count: float, thing: str) -> str:
+    return f"{count} {thing}" if count == 1 else f"{count} {thing}s"

@@ -15,11 +15,14 @@ from pathlib import Path
 from layout.errors import FileError
 from layout.outputs.bids import (
     COORDSYSTEM_JSON,
+    ELECTRODES_JSON,
     ELECTRODES_TSV,
     coordsystem_json,
+    electrodes_json,
     electrodes_of,
     electrodes_tsv,
 )
+from layout.outputs.columns import columns_json
 from layout.outputs.figure import Picture, scalp_pictures
 from layout.outputs.ranking import ranking_json
 from layout.outputs.report import report_html
@@ -33,6 +36,7 @@ Pictures = tuple[Picture, ...]
 TOP_FILES: dict[str, Callable[[DesignResult, Pictures], str | bytes]] = {
     RANKING: lambda result, pictures: ranking_json(result),
     "ranking.csv": lambda result, pictures: ranking_csv(result),
+    "columns.json": lambda result, pictures: columns_json(),
     "report.html": report_html,
 }
 LAYOUT_FILES: dict[str, Callable[[RankedLayout, Picture], str | bytes]] = {
@@ -42,6 +46,7 @@ LAYOUT_FILES: dict[str, Callable[[RankedLayout, Picture], str | bytes]] = {
 }
 ELECTRODE_FILES: dict[str, Callable[[DesignResult, RankedLayout], str | bytes]] = {
     ELECTRODES_TSV: lambda result, layout: electrodes_tsv(layout),
+    ELECTRODES_JSON: lambda result, layout: electrodes_json(),
     COORDSYSTEM_JSON: lambda result, layout: coordsystem_json(result),
 }
 

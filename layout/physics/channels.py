@@ -8,7 +8,7 @@ import numpy as np
 
 from layout.anatomy.head import Head
 from layout.physics.lead_field import LeadField, compute_lead_field, eye_field, moved_onto_spheres
-from layout.physics.sphere_model import Displacements, SphereModel
+from layout.physics.sphere_model import Displacements, MappedCortex, SphereModel
 from layout.sensing.candidates import Candidates
 
 
@@ -25,24 +25,28 @@ class Channels:
     def __len__(self) -> int:
         return len(self.positions)
 
-    def lead_field(self, sphere: SphereModel, head: Head, sources: np.ndarray, free: bool) -> LeadField:
-        """Lead field to the numbered sources of the head's cortex, along their normals or free."""
-        normals = None if free else head.cortex.normals[sources]
+    def lead_field(self, cortex: MappedCortex, sources: np.ndarray, free: bool) -> LeadField:
+        """Lead field to the numbered sources of the cortex, along their normals or free."""
         return compute_lead_field(
-            sphere,
-            head,
+            cortex.sphere,
+            cortex.head,
             self.positions,
             self.axes,
             self.is_electrode,
             self.normals,
-            head.cortex.positions[sources],
-            normals,
+            cortex.sources.some(sources, free),
         )
 
-    def displacements(self, sphere: SphereModel, head: Head) -> Displacements:
-        """How far the quick model moves these channels and the head's whole cortex."""
+    def displacements(self, cortex: MappedCortex) -> Displacements:
+        """How far the quick model moves these channels and the whole cortex."""
         return moved_onto_spheres(
-            sphere, head, self.positions, self.axes, self.is_electrode, self.normals, head.cortex.positions
+            cortex.sphere,
+            cortex.head,
+            self.positions,
+            self.axes,
+            self.is_electrode,
+            self.normals,
+            cortex.sources,
         )
 
     def eye_gain(self, sphere: SphereModel, head: Head) -> np.ndarray:

@@ -12,11 +12,11 @@ from layout.physics.nearest_point import nearest_on_surface
 from layout.physics.sarvas import magnetic_lead_field
 from layout.physics.sphere_model import (
     Displacements,
+    MappedSources,
     SphereModel,
     displacements,
     map_electrodes,
     map_magnetometers,
-    map_sources,
 )
 from layout.units import MM
 
@@ -44,21 +44,18 @@ def compute_lead_field(
     axes: np.ndarray,
     is_electrode: np.ndarray,
     normals: np.ndarray,
-    source_positions: np.ndarray,
-    source_normals: np.ndarray | None,
+    sources: MappedSources,
 ) -> LeadField:
-    """Gain of each channel for a unit dipole at each source, everything given in the head frame.
+    """Gain of each channel for a unit dipole at each source, channels and free moments in the head frame.
 
     Channels (n): positions (n, 3) [m], unit axes (n, 3) (ignored for electrodes), is_electrode (n,) bool,
-    normals (n, 3) of the scalp at the site. Sources (m): positions (m, 3) [m]; unit normals (m, 3) for fixed
-    orientation, None for free.
+    normals (n, 3) of the scalp at the site. Sources (m): as `map_sources` places them on this model, with normals for
+    fixed orientation, without for free.
 
-    Raises LayoutError where a source or sensor cannot be placed on the spheres.
+    Raises LayoutError where a sensor cannot be placed on the spheres.
     """
     is_electrode = np.asarray(is_electrode, bool)
     positions = np.asarray(positions, float).reshape(-1, 3)
-    source_positions = np.asarray(source_positions, float).reshape(-1, 3)
-    sources = map_sources(model, head, source_positions, source_normals)
     electrodes, points, turned_axes = _map_channels(model, head, positions, axes, is_electrode, normals)
     centred = sources.positions - model.centre
     electric = electric_lead_field(
@@ -66,17 +63,11 @@ def compute_lead_field(
     )
     magnetic = magnetic_lead_field(points - model.centre, turned_axes, centred, moments=sources.normals)
     gain = _interleave(is_electrode, electric, magnetic)
-    if source_normals is None and head.sphere is None:
+    if sources.normals is None and head.sphere is None:
         for first in range(0, len(gain), ROWS_AT_ONCE):
             rows = slice(first, first + ROWS_AT_ONCE)
             gain[rows] = np.einsum("nmj,mjk->nmk", gain[rows], sources.rotations)
-    report = displacements(
-        (source_positions, sources.positions),
-        (positions[is_electrode], electrodes),
-        (positions[~is_electrode], points),
-        sources.clipped,
-    )
-    return LeadField(gain, report)
+    return LeadField(gain, _displacements(sources, positions, is_electrode, electrodes, points))
 
 
 def moved_onto_spheres(
@@ -86,13 +77,22 @@ def moved_onto_spheres(
     axes: np.ndarray,
     is_electrode: np.ndarray,
     normals: np.ndarray,
-    source_positions: np.ndarray,
+    sources: MappedSources,
 ) -> Displacements:
     """How far the model moves these channels and sources; arguments as in `compute_lead_field`."""
     electrodes, points, _ = _map_channels(model, head, positions, axes, is_electrode, normals)
-    sources = map_sources(model, head, source_positions, None)
+    return _displacements(sources, positions, is_electrode, electrodes, points)
+
+
+def _displacements(
+    sources: MappedSources,
+    positions: np.ndarray,
+    is_electrode: np.ndarray,
+    electrodes: np.ndarray,
+    points: np.ndarray,
+) -> Displacements:
     return displacements(
-        (source_positions, sources.positions),
+        (sources.given, sources.positions),
         (positions[is_electrode], electrodes),
         (positions[~is_electrode], points),
         sources.clipped,

@@ -8,8 +8,7 @@ much.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
-from typing import NamedTuple
+from dataclasses import dataclass, replace
 
 import numpy as np
 from scipy.optimize import least_squares
@@ -50,15 +49,43 @@ class SphereModel:
         return float(self.radii[-1])
 
 
-class MappedSources(NamedTuple):
-    """positions (m, 3) [m] and normals (m, 3) in the sphere; rotations (m, 3, 3): sphere moment = rotation @
-    head moment; clipped: how many sources were pulled inward to stay in the brain shell.
+@dataclass(frozen=True)
+class MappedSources:
+    """Sources on the spheres. given (m, 3) [m]: where they are in the head; positions (m, 3) [m] and normals (m, 3) in
+    the sphere, normals None for free moments; rotations (m, 3, 3): sphere moment = rotation @ head moment; held (m,)
+    bool: pulled inward to stay in the brain shell.
     """
 
+    given: np.ndarray
     positions: np.ndarray
     normals: np.ndarray | None
     rotations: np.ndarray
-    clipped: int
+    held: np.ndarray
+
+    @property
+    def clipped(self) -> int:
+        """How many sources were pulled inward."""
+        return int(np.count_nonzero(self.held))
+
+    def some(self, members: np.ndarray, free: bool) -> MappedSources:
+        """The numbered ones, of free moments or along their normals."""
+        normals = None if free else self.normals[members]
+        return MappedSources(
+            self.given[members], self.positions[members], normals, self.rotations[members], self.held[members]
+        )
+
+
+@dataclass(frozen=True)
+class MappedCortex:
+    """A head's whole cortex on its spheres, placed once for all lead fields."""
+
+    sphere: SphereModel
+    head: Head
+    sources: MappedSources
+
+    def with_conductivities(self, conductivities: np.ndarray) -> MappedCortex:
+        """The same spheres and places with other conductivities [S/m], as many as before."""
+        return replace(self, sphere=replace(self.sphere, conductivities=np.asarray(conductivities, float)))
 
 
 @dataclass(frozen=True)
@@ -74,19 +101,21 @@ class Displacements:
     sources_clipped: int = 0
 
     def summary(self) -> str:
-        """One printable sentence in mm."""
+        """Part of a printable sentence, in mm; kinds that nothing moved are left out."""
         parts = [
-            f"{name} {rms / MM:.1f} (at most {largest / MM:.1f})"
+            f"{name} {rms / MM:.1f} mm (at most {largest / MM:.1f})"
             for name, rms, largest in (
                 ("sources", self.sources_rms, self.sources_max),
                 ("electrodes", self.electrodes_rms, self.electrodes_max),
                 ("magnetometers", self.magnetometers_rms, self.magnetometers_max),
             )
+            if largest > 0
         ]
-        return (
-            f"moved onto spheres, rms mm: {', '.join(parts)}; "
-            f"{self.sources_clipped} sources held inside the brain shell"
-        )
+        moved = f"to fit the spheres, positions move by (rms): {', '.join(parts)}" if parts else "no position moves"
+        if not self.sources_clipped:
+            return moved
+        held = "source is" if self.sources_clipped == 1 else "sources are"
+        return f"{moved}; {self.sources_clipped} {held} held inside the brain's sphere"
 
 
 def fit_sphere_model(head: Head, conductivities: np.ndarray) -> SphereModel:
@@ -130,15 +159,20 @@ def map_sources(model: SphereModel, head: Head, positions: np.ndarray, normals: 
     """
     positions = np.asarray(positions, float).reshape(-1, 3)
     if head.sphere is not None:
-        return MappedSources(positions, normals, np.broadcast_to(np.eye(3), (len(positions), 3, 3)), 0)
+        same = np.broadcast_to(np.eye(3), (len(positions), 3, 3))
+        return MappedSources(positions, positions, normals, same, np.zeros(len(positions), dtype=bool))
     near = nearest_on_surface(head.inner_skull, positions)
     u = _directions(positions - model.centre)
     wanted = model.inner_skull_radius - near.inside_depth
     radius = np.clip(wanted, 0.0, model.brain_radius - BRAIN_MARGIN)
     rotations = smallest_rotations(near.normals, u)
     turned = None if normals is None else np.einsum("mij,mj->mi", rotations, np.asarray(normals, float))
-    clipped = int(np.count_nonzero(wanted > radius))
-    return MappedSources(model.centre + radius[:, None] * u, turned, rotations, clipped)
+    return MappedSources(positions, model.centre + radius[:, None] * u, turned, rotations, wanted > radius)
+
+
+def map_cortex(model: SphereModel, head: Head) -> MappedCortex:
+    """All sources of the head's cortex, with their normals, placed as by `map_sources`."""
+    return MappedCortex(model, head, map_sources(model, head, head.cortex.positions, head.cortex.normals))
 
 
 def map_electrodes(model: SphereModel, positions: np.ndarray) -> np.ndarray:

@@ -128,7 +128,7 @@ def _usable_places(
     if entry.kind == "electrode" and entry.reference != "any":
         resolve_name(entry.reference, left.names, f"{key}.reference")
     said = f"{entry.name}: {len(left.names)} of {len(places.names)} sites allowed"
-    notes = [said + (f" (lost, with overlaps: {losses})" if losses else "")]
+    notes = [said + (f" (taken by {losses}; a site may be counted twice)" if losses else "")]
     return left, notes + [note for note in places.notes if "A1" not in note or {"A1", "A2"} & set(left.names)]
 
 

@@ -20,22 +20,31 @@ from pathlib import Path
 ROOT = Path(__file__).parents[2]
 KEPT = ("ranking.csv", "layout-1/sensors.csv", "layout-1/sub-plan_electrodes.tsv")
 PICTURE = "layout-1/scalp.png"  # kept for the README's brief only
+COLUMNS = 100  # of the kept terminal output
 
 
 def run(brief: Path) -> str:
     """Run one brief, keep its small tables, and return its line of the table."""
     with tempfile.TemporaryDirectory() as folder:
-        out = Path(folder) / brief.stem
+        out = Path(folder).resolve() / brief.stem
         start = time.perf_counter()
         command = [sys.executable, "-m", "layout", "design", str(brief), "--out", str(out)]
-        subprocess.run(command, cwd=ROOT, check=True, stdout=subprocess.DEVNULL)
+        env = {**os.environ, "COLUMNS": str(COLUMNS), "PYTHONIOENCODING": "utf-8"}
+        printed = subprocess.run(
+            command, cwd=ROOT, env=env, check=True, stdout=subprocess.PIPE, encoding="utf-8"
+        ).stdout
         seconds = time.perf_counter() - start
         keep = ROOT / "results" / brief.stem
         shutil.rmtree(keep, ignore_errors=True)
+        keep.mkdir(parents=True)
         for name in [*KEPT, *([PICTURE] if brief.stem == "readme" else [])]:
             if (out / name).exists():
                 (keep / name).parent.mkdir(parents=True, exist_ok=True)
                 shutil.copy(out / name, keep / name)
+        if brief.stem == "readme":  # as without --out
+            text = printed.replace(str(out), f"results/runs/{brief.stem}")
+            lines = (line.rstrip() for line in text.splitlines())
+            (keep / "terminal.txt").write_text("\n".join([*lines, ""]), encoding="utf-8")
         ranking = json.loads((out / "ranking.json").read_text())
     best = ranking["layouts"][0]
     baselines = {one["name"]: one["value"] for one in ranking["baselines"]}

@@ -102,11 +102,12 @@ def cells_of(n_cells, width):
 KINDS = ("plain", "cells", "spacing", "offset", "blocks", "groups", "keep", "zone limit", "offset and spacing", "mixed")
 
 
-def random_instance(kind, seed):
-    """(model, feasible, places) of one kind with n <= 25 candidates and k <= 5."""
+def random_instance(kind, seed, n_target=3, small=False):
+    """(model, feasible, places) of one kind with n <= 25 candidates and k <= 5; small: n <= 16."""
     rng = np.random.default_rng([KINDS.index(kind), seed])
     k = int(rng.integers(2, 6))
     n = int(rng.integers(10, 26)) if k < 5 else int(rng.integers(10, 19))
+    n = 10 + (n - 10) % 7 if small else n
     scale = float(rng.choice([0.3, 1.0, 3.0]))
     one = np.zeros(n, dtype=int)
     widths, electrodes, cliques, keep, at_most, places = np.ones(n, dtype=int), (), (), (), (), None
@@ -137,5 +138,5 @@ def random_instance(kind, seed):
     if kind == "zone limit":
         at_most = ((np.arange(n // 2), 1), (np.arange(n // 3, n - 2), 2))
         counts = np.array([min(k, 3)])
-    model = random_model(rng, widths, electrodes, scale=scale)
+    model = random_model(rng, widths, electrodes, n_target=n_target, scale=scale)
     return model, Feasible(group, counts, cliques, keep, at_most), places

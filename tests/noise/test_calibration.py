@@ -12,10 +12,10 @@ from layout.anatomy.positions import family_names
 from layout.anatomy.scalp_points import normals_at, project
 from layout.design import build_problem
 from layout.noise.assemble import assemble_noise
-from layout.noise.calibration import calibrate
+from layout.noise.calibration import Figure, calibrate
 from layout.physics.channels import candidate_channels, electrodes_at
 from layout.physics.lead_field import compute_lead_field
-from layout.physics.sphere_model import fit_sphere_model
+from layout.physics.sphere_model import map_sources
 
 
 @pytest.fixture
@@ -28,27 +28,30 @@ def calibration_sites(study):
     return sites, normals_at(study.head.scalp, project(study.head.scalp, np.array(list(sites.values()))))
 
 
-def calibrated(study, sphere=None, **changed):
+NOMINAL = (0.33, 0.0165, 0.33)  # brain, skull, scalp [S/m]: skull 1/20 of the brain
+
+
+def calibrated(study, cortex=None, **changed):
     labels = cortex_patches(study.head.cortex, study.brief.noise.patch_area)
     noise = replace(study.brief.noise, **changed)
-    return calibrate(study.head, sphere or study.sphere, noise, labels, *calibration_sites(study))
+    return calibrate(cortex or study.cortex, np.array(NOMINAL), noise, labels, *calibration_sites(study))
 
 
-def free_patch_covariance(study, points, axes, density):
+def free_patch_covariance(study, points, axes, density, sphere=None):
     """Covariance (n, n) of the background on a sphere head, patch by patch; axes None: electrodes."""
     cortex = study.head.cortex
     labels = cortex_patches(cortex, study.brief.noise.patch_area)
     n = len(points)
     electrode = np.full(n, axes is None)
+    sphere = sphere or study.sphere
     gain = compute_lead_field(
-        study.sphere,
+        sphere,
         study.head,
         points,
         np.zeros((n, 3)) if axes is None else axes,
         electrode,
         np.zeros((n, 3)) if axes is None else axes,
-        cortex.positions,
-        None,
+        map_sources(sphere, study.head, cortex.positions, None),
     ).gain
     covariance = np.zeros((n, n))
     for patch in np.unique(labels):
@@ -78,12 +81,29 @@ def test_magnetic_rms_is_what_direct_computation_gives(study, gap, which):
 
 def test_figures_print_the_same_numbers(study):
     found = calibrated(study)
-    values = {label: value for label, (value, _, _) in found.figures(39.0).items()}
+    values = {label: figure.value for label, figure in found.figures(39.0).items()}
     assert values["background EEG, rms at 10-20 sites"] == pytest.approx(8.0)
     assert values["background field 20 mm off the scalp, rms"] == pytest.approx(found.magnetic_off * 1e15)
     assert values["background field 6.5 mm off the scalp, rms"] == pytest.approx(found.magnetic_on * 1e15)
     assert values["background moment density, rms"] == pytest.approx(found.density * 1e-6 * 1e9)
     assert values["eye dipole, rms of each component"] == pytest.approx(found.eye * 1e9)
+
+
+def test_a_figure_outside_its_band_says_on_which_side():
+    sides = [Figure(value, "fT", "5-9 fT", 5.0, 9.0).outside for value in (4.9, 5.0, 9.0, 9.1)]
+    assert sides == ["below", "", "", "above"]
+    assert [Figure(value, "nAm", "below 2", high=2.0).outside for value in (-9.0, 2.1)] == ["", "above"]
+    assert Figure(1e9, "nAm").outside == ""
+
+
+def test_the_field_is_no_verdict_on_a_brief_without_magnetometers(study):
+    """Both rms values stay printed beside their bands; the field so near the scalp has none and is left out."""
+    with_coils, without = (calibrated(study).figures(4.0, coils) for coils in (True, False))
+    field = "background field 20 mm off the scalp, rms"
+    assert (with_coils[field].judged, without[field].judged) == (True, False)
+    assert with_coils[field].value == without[field].value
+    assert "for comparison" in without[field].remark
+    assert with_coils.keys() - without.keys() == {"background field 6.5 mm off the scalp, rms"}
 
 
 def test_strengths_are_proportional_to_what_is_asked(study):
@@ -96,13 +116,13 @@ def test_strengths_are_proportional_to_what_is_asked(study):
 def test_noise_is_held_when_conductivities_change(study):
     """The calibration of the nominal head serves another conductivity: the density stays, the EEG does not."""
     found = calibrated(study)
-    other = fit_sphere_model(study.head, np.array([0.33, 0.33 / 80, 0.33]))
+    other = study.cortex.with_conductivities(np.array([0.33, 0.33 / 80, 0.33]))
     channels = candidate_channels(study.candidates)
     labels = cortex_patches(study.head.cortex, study.brief.noise.patch_area)
-    nothing, ones = np.zeros(len(study.head.cortex), dtype=bool), np.ones(len(channels))
+    ones = np.ones(len(channels))
     here, there = (
-        assemble_noise(channels, sphere, study.head, study.brief.noise, found, labels, nothing, ones)
-        for sphere in (study.sphere, other)
+        assemble_noise(channels, cortex, study.brief.noise, found, labels, study.head.cortex.areas, ones)
+        for cortex in (study.cortex, other)
     )
     coil = ~channels.is_electrode
     background = here.parts["background"]
@@ -110,10 +130,35 @@ def test_noise_is_held_when_conductivities_change(study):
     quieter = there.nuisance[~coil, background].std() / here.nuisance[~coil, background].std()
     assert quieter < 0.8  # a skull four times as resistive
     points = electrodes_at(channels.positions[~coil])
-    direct = points.lead_field(other, study.head, np.arange(len(labels)), free=True).gain
+    direct = points.lead_field(other, np.arange(len(labels)), free=True).gain
     patch = labels == 3
     expected = found.density * np.einsum("nmk,m->nk", direct[:, patch], study.head.cortex.areas[patch]) / np.sqrt(3)
     np.testing.assert_allclose(there.nuisance[~coil, 9:12], expected, rtol=1e-9, atol=1e-12 * np.abs(expected).max())
+
+
+@pytest.mark.parametrize("skull", [0.33 / 80, 0.33 / 8])
+def test_strengths_are_those_of_the_nominal_head_whatever_the_brief_says(study, skull):
+    """A brief of another skull: density, eyes and fields as on the nominal head, the EEG they imply printed beside."""
+    conductivities = f"conductivities_s_per_m = [0.33, {skull}, 0.33]\n"
+    here = study_of(SPHERE + conductivities, TWO_REGIONS, cups(4, 'family = "10-20"'), coils(3, "grid_mm = 40"), BAND)
+    for found, nominal in (
+        (build_problem(here).calibration, build_problem(study).calibration),
+        (calibrated(study, here.cortex), calibrated(study)),
+    ):
+        assert (found.density, found.eye, found.eeg) == (nominal.density, nominal.eye, nominal.eeg)
+        assert (found.magnetic_off, found.magnetic_on) == (nominal.magnetic_off, nominal.magnetic_on)
+        assert nominal.eeg_here == nominal.eeg == 8e-6
+    points = np.array(list(calibration_sites(study)[0].values()))
+    centring = np.eye(len(points)) - 1 / len(points)
+    covariance = centring @ free_patch_covariance(study, points, None, found.density, here.sphere) @ centring
+    implied = np.sqrt(np.trace(covariance) / len(points))
+    assert here.sphere.conductivities[1] == skull
+    assert found.eeg_here == pytest.approx(implied, rel=1e-10, abs=0)
+    assert (implied < 0.8 * 8e-6) if skull < 0.0165 else (implied > 1.2 * 8e-6)
+    figures = found.figures(39.0)
+    assert [figures[name].value for name in list(figures)[:2]] == pytest.approx([8.0, 1e6 * implied])
+    assert "nominal head" in next(iter(figures.values())).remark
+    assert figures.keys() - nominal.figures(39.0).keys() == {"background EEG implied here, rms"}
 
 
 def test_regions_are_left_out_of_the_background_unless_asked(study):
@@ -131,12 +176,14 @@ def test_default_brief_on_the_template_lies_inside_both_bands():
     """Defaults for [1, 40] Hz: EEG and the field 20 mm off the scalp satisfy their bands at once."""
     problem = problem_of(TEMPLATE, HANDS, cups(4, 'family = "10-20"'), BAND)
     figures = problem.calibration.figures(39.0)
-    eeg, unit, _ = figures["background EEG, rms at 10-20 sites"]
+    eeg = figures["background EEG, rms at 10-20 sites"]
     low, high = (size / np.sqrt(8) for size in EEG_PEAK_TO_PEAK_UV)  # a sine's rms from its peak-to-peak
-    assert (low < eeg < high, unit) == (True, "µV")
-    field, unit, band = figures["background field 20 mm off the scalp, rms"]
+    assert (low < eeg.value < high, eeg.unit) == (True, "µV")
+    field = figures["background field 20 mm off the scalp, rms"]
     low, high = (rate * np.sqrt(39) for rate in MAGNETIC_FT_PER_RTHZ)
-    assert (low < field < high, unit) == (True, "fT")
-    assert band.startswith(f"{low:.0f}-{high:.0f} fT")
-    assert figures["background field 6.5 mm off the scalp, rms"][0] > field
-    assert figures["background moment density, rms"][0] < LARGEST_DENSITY_NAM_PER_MM2
+    assert (low < field.value < high, field.unit) == (True, "fT")
+    assert field.band.startswith(f"{low:.0f}-{high:.0f} fT")
+    assert (field.low, field.high) == pytest.approx((low, high))
+    assert figures["background field 6.5 mm off the scalp, rms"].value > field.value
+    assert figures["background moment density, rms"].value < LARGEST_DENSITY_NAM_PER_MM2
+    assert not any(figure.outside for figure in figures.values())

@@ -18,6 +18,7 @@ from layout.brief.objects import (
     SearchBrief,
     SitesBrief,
 )
+from layout.noise.calibration import Figure
 from layout.outputs.result import Baseline, DesignResult, RankedLayout, SensorRow
 from layout.sensing.candidates import Candidates, Sites
 
@@ -59,7 +60,8 @@ def _head() -> Head:
 def _region(head: Head, name: str, centre: tuple[float, float, float], radius: float) -> Region:
     centre_point = np.array(centre)
     distance = np.linalg.norm(head.cortex.positions - centre_point, axis=1)
-    return Region(name, np.flatnonzero(distance < radius), 10e-9, False, False, centre_point)
+    members = np.flatnonzero(distance < radius)
+    return Region(name, members, head.cortex.areas[members], 10e-9, False, False, centre_point)
 
 
 def _sites(head: Head) -> Sites:
@@ -189,6 +191,7 @@ def make_result(only: str | None = None) -> DesignResult:
                 per_region_bits={region.name: value / (2 + k) for k, region in enumerate(regions)},
                 equals_even_spread_of=31 if rank > 1 else None,
                 even_spread_limit=64,
+                housings_meet=None if only == "electrode" else 3 - rank,
             )
         )
     baselines = (
@@ -210,12 +213,25 @@ def make_result(only: str | None = None) -> DesignResult:
         candidates=candidates,
         head=head,
         regions=regions,
-        notes=("Spherical head: only a quick model.", "Brain noise is assumed, not measured <here>."),
-        figures_of_noise={
-            "background EEG, rms": (14.8, "µV", "10 to 50 µV, common practice"),
-            "background field, rms": (310.0, "fT", "100 to 1000 fT"),
-            "largest electrode displacement": (float("nan"), "mm", ""),
+        bound_from="branch and bound",
+        notes={
+            "Head and model": ("Spherical head: only a quick model.",),
+            "Strengths and noise": ("Brain noise is assumed, not measured <here>.",),
+            "Ranking": (),
         },
-        search_effort={"nodes": 120, "bound steps": 340},
+        figures_of_noise={
+            "background EEG, rms": Figure(14.8, "µV", "10 to 50 µV", 10.0, 50.0, remark="set by the brief"),
+            "background field, rms": Figure(1310.0, "fT", "100 to 1000 fT", 100.0, 1000.0),
+            "eye dipole, rms": Figure(float("nan"), "nAm"),
+            "far field, rms": Figure(2.0, "fT", "5 to 9 fT", 5.0, 9.0, remark="for comparison", judged=False),
+        },
+        search_effort={
+            "starts": 20,
+            "swaps": 1,
+            "bound rounds": 340,
+            "parts examined": 120,
+            "parts left open": 7,
+            "differ by": 2,
+        },
         audit={"target": np.arange(6.0).reshape(3, 2), "conflicts": np.array([[0, 1]])},
     )

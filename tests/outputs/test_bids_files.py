@@ -9,8 +9,10 @@ from references import bids_electrode_rules as rules
 
 from layout.outputs.bids import (
     COORDSYSTEM_JSON,
+    ELECTRODES_JSON,
     ELECTRODES_TSV,
     coordsystem_json,
+    electrodes_json,
     electrodes_of,
     electrodes_tsv,
 )
@@ -26,12 +28,19 @@ def _lines(layout):
 def test_columns_names_and_missing_values(result):
     head, *rows = _lines(result.layouts[0])
     assert head[:4] == rules.FIRST_COLUMNS
-    assert set(head[4:]) <= rules.RECOMMENDED_COLUMNS
+    defined = json.loads(electrodes_json())
+    assert set(head[4:]) - rules.RECOMMENDED_COLUMNS == set(defined)
+    assert all(column["Description"] for column in defined.values())
     assert all(len(row) == len(head) for row in rows)
     assert all(cell.strip() == cell and cell for row in rows for cell in row)
     names = [row[0] for row in rows]
     assert len(names) == len(set(names))
-    assert all(cell == rules.MISSING for row in rows for cell in row[4:])
+    assert all(cell == rules.MISSING for row in rows for cell in row[4:7])
+    roles = [row[head.index("role")] for row in rows]
+    assert set(roles) - {rules.MISSING} == set(defined["role"]["Levels"])
+    expected = [sensor.role or rules.MISSING for sensor in electrodes_of(result.layouts[0])]
+    assert roles == expected
+    assert roles.count("reference") == 1
 
 
 def test_only_electrodes_and_positions_within_rounding(result):
@@ -75,3 +84,4 @@ def test_coordsystem(result):
 def test_file_names():
     assert re.fullmatch(rules.ELECTRODES_NAME, ELECTRODES_TSV)
     assert re.fullmatch(rules.COORDSYSTEM_NAME, COORDSYSTEM_JSON)
+    assert ELECTRODES_TSV.replace(".tsv", ".json") == ELECTRODES_JSON  # a sidecar has its table's name

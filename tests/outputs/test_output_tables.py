@@ -2,9 +2,11 @@
 
 import csv
 import io
+import json
 
 import numpy as np
 
+from layout.outputs.columns import columns_json
 from layout.outputs.plain import one_line
 from layout.outputs.tables import SENSOR_COLUMNS, ranking_csv, sensors_csv
 
@@ -49,3 +51,20 @@ def test_ranking_has_layouts_then_baselines(result):
     assert rows[1]["percent_of_best"] == f"{100 * result.layouts[1].value / result.layouts[0].value:.6g}"
     assert len(rows[0]["sensors"].split(";")) > len(result.layouts[0].sensors)  # one hostile name holds a semicolon
     assert rows[6]["sensors"] == ""
+
+
+def test_columns_json_defines_every_column_and_no_other(result):
+    defined = json.loads(columns_json())
+    written = {"ranking.csv": ranking_csv(result), "layout-*/sensors.csv": sensors_csv(result.layouts[0])}
+    assert {name: list(columns) for name, columns in defined.items()} == {
+        name: text.splitlines()[0].split(",") for name, text in written.items()
+    }
+    for columns in defined.values():
+        for name, column in columns.items():
+            assert column["Description"].strip()
+            assert ("Units" in column) == name.endswith(("_mm", "_bits", "_percent", "percent_of_best")), name
+
+
+def test_housings_that_meet_are_counted(result, electrodes_only):
+    assert [row["housings_meet"] for row in _read(ranking_csv(result))] == ["2", "1", "0", "", "", "", ""]
+    assert {row["housings_meet"] for row in _read(ranking_csv(electrodes_only))} == {""}

@@ -26,6 +26,9 @@ def test_required_keys_and_no_nan(result):
     assert content["seed"] == 7
     assert content["title"] == HOSTILE_TITLE
     assert content["noise_figures"][2]["value"] is None  # a NaN in the result
+    assert [figure["outside"] for figure in content["noise_figures"]] == ["", "above", "", "below"]
+    assert [layout["housings_meet"] for layout in content["layouts"]] == [2, 1, 0]
+    assert content["bound_from"] == "branch and bound"
 
 
 def test_nan_anywhere_becomes_null(result):

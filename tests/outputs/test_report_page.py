@@ -93,7 +93,10 @@ def test_says_what_was_shown_and_no_more(page, result, pictures):
     assert "proven to 0.1 %" in page.text
     assert page.text.count("more than 64") == 1
     assert all(caution in page.text for caution in CAUTIONS)
-    assert all(note in page.text for note in result.notes)
+    assert all(note in page.text for notes in result.notes.values() for note in notes)
+    assert page.text.count("outside the band, above it") == 1
+    assert "120 parts examined, 7 left open" in page.text
+    assert "Pairs of housings that meet: 2 in layout 1, 1 in layout 2" in page.text
     assert "nan" not in re.findall(r"[a-z]+", page.text.lower())
     open_layout = dataclasses.replace(result.layouts[0], proven=False, gap_percent=3.2)
     stopped = dataclasses.replace(

@@ -27,6 +27,7 @@ def test_numbers_are_whole_at_80_columns(result):
         assert number in words
     assert " ".join(words).count("more than 64") == 1
     assert words.count("31") == 2
+    assert "1310 fT" in " ".join(words)
     assert "…" not in "".join(words)
 
 
@@ -52,3 +53,40 @@ def test_claims(result):
     assert "stopped by its time allowance" in text
     assert "optimal" not in text.lower()
     assert "yes" not in text.split()
+
+
+def test_every_sensor_of_layout_1_has_a_row_with_its_nearest_position(result):
+    lines = _printed(result, 120).splitlines()
+    begin = next(n for n, line in enumerate(lines) if line.startswith("Sensors of layout 1"))
+    rows = [line.split() for line in lines[begin:] if line.split() and line.split()[0].isdigit()]
+    sensors = result.layouts[0].sensors
+    assert [int(row[0]) for row in rows] == [sensor.number for sensor in sensors]
+    for row, sensor in zip(rows, sensors, strict=True):
+        assert f"{1000 * sensor.nearest_offset:.1f} mm" in " ".join(row)
+        assert f"{sensor.marginal_bits:.3f}" in row
+        assert ("reference" in row) == (sensor.role == "reference")
+
+
+def test_figures_outside_their_band_are_said_to_be(result):
+    text = " ".join(_printed(result, 200).split())
+    assert text.count("outside the band") == 1
+    assert "100 to 1000 fT outside the band, above it" in text
+    assert "5 to 9 fT below the band; for comparison" in text
+    assert "10 to 50 µV set by the brief" in text
+
+
+def test_effort_housings_and_where_the_bound_is_from(result, electrodes_only):
+    text = " ".join(_printed(result).split())
+    assert (
+        "20 starts, 1 swap. Bound: 340 rounds of tightening; branch and bound: 120 parts examined, 7 left open." in text
+    )
+    assert "Pairs of housings that meet: 2 in layout 1, 1 in layout 2;" in text
+    assert "(bound from branch and bound)" in text
+    assert "ousings" not in _printed(electrodes_only)
+
+
+def test_notes_stand_under_their_headings(result):
+    lines = _printed(result).splitlines()
+    assert lines[lines.index("Head and model") + 1] == "- Spherical head: only a quick model."
+    assert lines[lines.index("Strengths and noise") + 1].startswith("- Brain noise")
+    assert "Ranking" not in lines  # nothing under it

@@ -29,9 +29,9 @@ def _everything(folder):
     return sorted(str(path.relative_to(folder)) for path in folder.rglob("*"))
 
 
-TOP = {"ranking.json", "ranking.csv", "report.html"}
+TOP = {"ranking.json", "ranking.csv", "columns.json", "report.html"}
 EACH = {"sensors.csv", "scalp.png", "scalp.svg"}
-BIDS = {"sub-plan_electrodes.tsv", "sub-plan_coordsystem.json"}
+BIDS = {"sub-plan_electrodes.tsv", "sub-plan_electrodes.json", "sub-plan_coordsystem.json"}
 
 
 def test_all_files_are_there(result, tmp_path):

@@ -30,7 +30,7 @@ def test_candidates_bring_their_channels(study):
 def test_lead_field_on_a_sphere_is_that_of_the_spheres(study, free):
     channels = candidate_channels(study.candidates)
     some = np.array([3, 400, 17])
-    gain = channels.lead_field(study.sphere, study.head, some, free).gain
+    gain = channels.lead_field(study.cortex, some, free).gain
     sources, normals = study.head.cortex.positions[some], study.head.cortex.normals[some]
     electrode = channels.is_electrode
     for rows, direct in (
@@ -51,8 +51,8 @@ def test_joined_channels_are_computed_as_they_are_apart(study):
     points = np.array([[0, 0, 0.092], [0.092, 0, 0]])
     parts = [electrodes_at(points), normal_magnetometers_above(points, points / 0.092, 0.02)]
     some = np.arange(50)
-    apart = [part.lead_field(study.sphere, study.head, some, free=True).gain for part in parts]
-    together = joined(*parts).lead_field(study.sphere, study.head, some, free=True).gain
+    apart = [part.lead_field(study.cortex, some, free=True).gain for part in parts]
+    together = joined(*parts).lead_field(study.cortex, some, free=True).gain
     np.testing.assert_allclose(together, np.concatenate(apart), rtol=1e-13)
 
 
@@ -68,6 +68,6 @@ def test_magnetometers_stand_above_their_point():
 
 def test_a_sphere_head_stays_where_it_is(study):
     """But for electrodes, which lie on the flat faces of the scalp's mesh."""
-    moved = candidate_channels(study.candidates).displacements(study.sphere, study.head)
+    moved = candidate_channels(study.candidates).displacements(study.cortex)
     assert (moved.sources_max, moved.magnetometers_max, moved.sources_clipped) == (0, 0, 0)
     assert moved.electrodes_max < 0.1e-3

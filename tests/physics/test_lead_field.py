@@ -28,11 +28,16 @@ def channels(head, seed=1, n=40):
     return positions, axes, is_electrode, normals
 
 
+def field_of(model, head, setting, sources, moments):
+    """Lead field of the channels to sources given in the head, placed on the model."""
+    return compute_lead_field(model, head, *setting, map_sources(model, head, sources, moments))
+
+
 def test_sphere_head_rows_are_the_kernels_rows(sphere_head):
     model = fit_sphere_model(sphere_head, THREE)
     positions, axes, is_electrode, normals = channels(sphere_head)
     sources = sphere_head.cortex.positions[::50]
-    field = compute_lead_field(model, sphere_head, positions, axes, is_electrode, normals, sources, None)
+    field = field_of(model, sphere_head, (positions, axes, is_electrode, normals), sources, None)
     assert field.gain.shape == (40, len(sources), 3)
     for row in range(40):
         point = positions[row : row + 1] - model.centre
@@ -52,8 +57,8 @@ def test_free_times_normal_equals_fixed(ellipsoid_head):
     rng = np.random.default_rng(2)
     sources = ellipsoid_head.cortex.positions[::20]
     moments = rng.normal(size=sources.shape)
-    free = compute_lead_field(model, ellipsoid_head, *setting, sources, None).gain
-    fixed = compute_lead_field(model, ellipsoid_head, *setting, sources, moments).gain
+    free = field_of(model, ellipsoid_head, setting, sources, None).gain
+    fixed = field_of(model, ellipsoid_head, setting, sources, moments).gain
     for rows in (setting[2], ~setting[2]):
         np.testing.assert_allclose(
             np.einsum("nmk,mk->nm", free[rows], moments),
@@ -68,9 +73,9 @@ def test_moments_along_the_skull_normal_are_magnetically_silent(ellipsoid_head):
     positions, axes, is_electrode, normals = channels(ellipsoid_head)
     sources = ellipsoid_head.cortex.positions[::20]
     skull = nearest_on_surface(ellipsoid_head.inner_skull, sources).normals
-    silent = compute_lead_field(model, ellipsoid_head, positions, axes, is_electrode, normals, sources, skull)
+    silent = field_of(model, ellipsoid_head, (positions, axes, is_electrode, normals), sources, skull)
     across = np.cross(skull, [0.1, 0.2, 0.97])
-    heard = compute_lead_field(model, ellipsoid_head, positions, axes, is_electrode, normals, sources, across)
+    heard = field_of(model, ellipsoid_head, (positions, axes, is_electrode, normals), sources, across)
     coils = ~is_electrode
     assert np.abs(silent.gain[coils]).max() < 1e-12 * np.abs(heard.gain[coils]).max()
     assert np.abs(silent.gain[is_electrode]).max() > np.abs(heard.gain[is_electrode]).max()
@@ -81,9 +86,9 @@ def test_spheres_given_as_surfaces_agree_with_spheres_declared(round_head, spher
     positions, axes, is_electrode, normals = channels(sphere_head)
     sources = sphere_head.cortex.positions[::50]
     moments = np.random.default_rng(3).normal(size=sources.shape)
-    setting = (positions, axes, is_electrode, normals, sources, moments)
-    declared = compute_lead_field(fit_sphere_model(sphere_head, THREE), sphere_head, *setting)
-    mapped = compute_lead_field(fit_sphere_model(round_head, THREE), round_head, *setting)
+    setting = (positions, axes, is_electrode, normals)
+    declared = field_of(fit_sphere_model(sphere_head, THREE), sphere_head, setting, sources, moments)
+    mapped = field_of(fit_sphere_model(round_head, THREE), round_head, setting, sources, moments)
     report = mapped.displacements
     assert max(report.sources_max, report.magnetometers_max) < 1e-4
     assert report.electrodes_max < 2e-4
@@ -97,18 +102,10 @@ def test_one_kind_only_and_displacements(ellipsoid_head):
     model = fit_sphere_model(ellipsoid_head, FOUR)
     positions, axes, is_electrode, normals = channels(ellipsoid_head)
     sources, moments = ellipsoid_head.cortex.positions[::100], ellipsoid_head.cortex.normals[::100]
-    both = compute_lead_field(model, ellipsoid_head, positions, axes, is_electrode, normals, sources, moments)
+    both = field_of(model, ellipsoid_head, (positions, axes, is_electrode, normals), sources, moments)
     for rows in (is_electrode, ~is_electrode):
-        part = compute_lead_field(
-            model,
-            ellipsoid_head,
-            positions[rows],
-            axes[rows],
-            is_electrode[rows],
-            normals[rows],
-            sources,
-            moments,
-        )
+        setting = (positions[rows], axes[rows], is_electrode[rows], normals[rows])
+        part = field_of(model, ellipsoid_head, setting, sources, moments)
         np.testing.assert_array_equal(part.gain, both.gain[rows])
     report = both.displacements
     moved = np.linalg.norm(map_sources(model, ellipsoid_head, sources, None).positions - sources, axis=1)

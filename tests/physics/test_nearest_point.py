@@ -61,5 +61,23 @@ def test_normals_follow_an_ellipsoid(ellipsoid_head):
     assert error(near.points, near.normals) <= error(surface.vertices, surface.normals) < np.radians(0.5)
 
 
+def test_no_face_is_passed_over():
+    """Against every face measured: faces large and small, a last cluster not full, points near and far."""
+    rng = np.random.default_rng(4)
+    for n_faces in (1, 31, 32, 33, 320, 1280):
+        size = 10.0 ** rng.uniform(-3, -1, (n_faces, 1, 1))
+        corners = rng.normal(0, 0.05, (n_faces, 1, 3)) + size * rng.normal(size=(n_faces, 3, 3))
+        surface = Surface(corners.reshape(-1, 3), np.arange(3 * n_faces).reshape(-1, 3))
+        points = np.concatenate([rng.uniform(-0.2, 0.2, (60, 3)), surface.vertices[:90]])
+        every = np.array(
+            [
+                np.linalg.norm(trimesh.triangles.closest_point(corners, np.tile(p, (n_faces, 1))) - p, axis=1).min()
+                for p in points
+            ]
+        )
+        found = nearest_on_surface(surface, points)
+        np.testing.assert_allclose(np.abs(found.inside_depth), every, rtol=0, atol=1e-14)
+
+
 def test_no_points(round_head):
     assert nearest_on_surface(round_head.inner_skull, np.empty((0, 3))).points.shape == (0, 3)

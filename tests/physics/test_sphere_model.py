@@ -172,8 +172,10 @@ def test_displacements_by_hand():
     assert report.sources_rms == pytest.approx(np.sqrt(12.5) * 1e-3)
     assert report.sources_max == pytest.approx(4e-3)
     assert report.electrodes_rms == report.electrodes_max == report.magnetometers_rms == 0
-    assert "sources 3.5 (at most 4.0)" in report.summary()
-    assert "5 sources" in report.summary()
+    assert "sources 3.5 mm (at most 4.0)" in report.summary()
+    assert "5 sources are held" in report.summary()
+    assert "electrodes" not in report.summary()
+    assert "magnetometers" not in report.summary()
 
 
 def test_impossible_models_are_one_sentence(round_head, sphere_head):
