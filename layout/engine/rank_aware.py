@@ -18,7 +18,7 @@ from layout.engine.information import BITS
 from layout.engine.model import LinearModel
 from layout.engine.relaxation import PooledRelaxation
 
-FLAT = 1e8  # variance of the offset in units of a channel's own noise; adds under 1e-6 bits to a limit
+FLAT = 1e8  # variance of the offset in units of a channel's own noise; adds about 1e-6 bits to a limit
 RESIDUAL_BITS = 1e-5  # what compressing the target may add to the limit
 
 

@@ -158,7 +158,7 @@ def _ranked(
         progress(f"bounding rank {len(layouts) + 1} of {len(found)}")
         limit = top if not layouts else limits.under(rule, chosen, root, deadline, tolerance)
         limit = min([limit, *(one.bound for one in layouts)])
-        if value > limit + 1e-9 * (1.0 + abs(limit)):
+        if value > limit + 1e-7 * (1.0 + abs(limit)):  # far above rounding
             raise ArithmeticError(f"A layout of {value} bits passed its certified bound of {limit} bits.")
         layouts.append(Chosen(chosen, value, limit, _moved(places, chosen, layouts)))
     swaps += more

@@ -25,16 +25,17 @@ from layout.units import NAM
 
 ROOT = Path(__file__).parents[2]
 COUNTS = (4, 8, 16, 32)
-PARTS = 300
+PARTS = 100
 
 
 def variants(brief: Brief) -> list[tuple[str, Brief]]:
     """The brief and variants with other regions, epochs, axes or spacing."""
-    stock = brief.stock[0]
+    stock = replace(brief.stock[0], spacing=0.0)
+    brief = replace(brief, stock=(stock,))
     spread = tuple(replace(region, coherent=False, moment=10 * NAM) for region in brief.regions)
     single = replace(brief.noise, averages=1)
     return [
-        ("as it is: coherent regions, 300 averages", brief),
+        ("one sensor per site, coherent regions, 300 averages", brief),
         ("the same, heads of three axes (60 channels)", replace(brief, stock=(replace(stock, axes="three_axis"),))),
         ("the same, normal axes only", replace(brief, stock=(replace(stock, axes="normal"),))),
         ("the same, 20 mm spacing", replace(brief, stock=(replace(stock, spacing=20e-3),))),

@@ -92,7 +92,7 @@ class _Watch:
             return tangent
 
         def watched_children(part, tangent, cut):
-            out = children(part, tangent, cut)
+            out, given_up = children(part, tangent, cut)
             inside = self._completions(part._node.chosen, part._node.candidates)
             times = np.zeros(len(case.sets), dtype=int)
             for chosen, candidates, weights in out:
@@ -101,10 +101,11 @@ class _Watch:
                 times += self._completions(chosen, candidates)
             assert (times <= inside).all()  # no set twice, and none that the part did not hold
             lost = inside & (times == 0)
-            assert case.bits[lost].max(initial=-np.inf) <= cut + ROUNDING  # fixing cuts off nothing above the cut
+            assert given_up <= cut + ROUNDING  # fixing cuts off nothing above the cut
+            assert case.bits[lost].max(initial=-np.inf) <= given_up + ROUNDING
             self.fixed += lost.sum()
             self.splits += 1
-            return out
+            return out, given_up
 
         def watched_finish(part):
             found, value = finish(part)
