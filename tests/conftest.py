@@ -1,6 +1,9 @@
-"""Shared by all tests: makes tests/references importable."""
+"""Shared by all tests: makes tests/references importable, and keeps the processes out of each other's way."""
 
+import os
 import sys
 from pathlib import Path
 
+# Tests run in one process per core; two BLAS threads in each would wait for each other. Read when numpy loads.
+os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")
 sys.path.insert(0, str(Path(__file__).parent))
