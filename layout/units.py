@@ -5,7 +5,5 @@ CM2 = 1e-4  # m²
 MM2 = 1e-6  # m²
 UV = 1e-6  # V
 FT = 1e-15  # T
-PT = 1e-12  # T
 NAM = 1e-9  # A·m
 FT_PER_CM = 1e-13  # T/m
-NAM_PER_MM2 = 1e-3  # A·m / m² = A/m

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass, field
 from pathlib import Path
-from typing import Literal, get_args
+from typing import Literal
 
 SourceMesh = Literal["coarse", "standard", "fine"]
 Frame = Literal["mni152", "head"]
@@ -13,7 +13,6 @@ Orientation = Literal["normal", "free"]
 Family = Literal["10-20", "10-10", "10-5"]
 Axes = Literal["normal", "tangents", "any_of_three", "two_axis", "three_axis"]
 
-AXES = get_args(Axes)
 
 # Parts of the scalp every head knows without being told; a brief may add its own under other names.
 BUILT_IN_ZONES = ("eyes", "ears", "neck", "face", "forehead")

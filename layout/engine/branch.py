@@ -56,6 +56,7 @@ def prove(
     value: float,
     root_limit: float,
     root_weights: np.ndarray,
+    target: tuple[np.ndarray, float] | None = None,
     *,
     tolerance: float = 1e-3,
     deadline: float | None = None,
@@ -64,9 +65,10 @@ def prove(
 ) -> Proof:
     """Best-first branch and bound from a layout of information `value` and a root limit [bits].
 
-    A part of the tree is dropped when its limit is within `tolerance` (relative) of the best layout. In every part that
-    stays, candidates whose presence (or absence) would push the limit that low are fixed out (in). Anytime: when the
-    deadline or node limit strikes, `bound` is the highest limit still open.
+    target: what `compressed` gave for the model and its rules, if it is known. A part of the tree is dropped when its
+    limit is within `tolerance` (relative) of the best layout. In every part that stays, candidates whose presence (or
+    absence) would push the limit that low are fixed out (in). Anytime: when the deadline or node limit strikes, `bound`
+    is the highest limit still open.
     """
     best, best_value = np.sort(chosen), value
     everything = np.arange(feasible.n_candidates)
@@ -74,7 +76,7 @@ def prove(
     free = everything[feasible.addable(start)]
     heap = [_Node(-root_limit, 0, root_limit, start, free, root_weights[free])]
     number = nodes = 0
-    target = compressed(model.target, most_channels(model, feasible))
+    target = target or compressed(model.target, most_channels(model, feasible))
     dropped = value
     stopped = False
     while heap:

@@ -145,6 +145,7 @@ def _ranked(
             value,
             top,
             root.weights,
+            limits.target,
             tolerance=0.95 * PROVEN_PERCENT / 100,
             deadline=deadline,
             node_limit=parts,
@@ -277,7 +278,7 @@ class _Limits:
 
     def __init__(self, model: LinearModel, feasible: Feasible) -> None:
         self._model = model
-        rows, self._residual = compressed(model.target, most_channels(model, feasible))
+        self.target = rows, self._residual = compressed(model.target, most_channels(model, feasible))
         nothing, everything = np.zeros(0, dtype=int), np.arange(feasible.n_candidates)
         self._left = remaining(model, nothing, everything, rows)
 
