@@ -5,6 +5,7 @@ import pytest
 from engine_instances import KINDS, allowed_subsets, cells_of, random_instance, spacing_pairs
 
 from layout.engine.feasible import Feasible
+from layout.engine.information_goal import InformationGoal
 from layout.engine.search import greedy, random_set
 from layout.errors import InfeasibleError
 
@@ -126,7 +127,7 @@ def test_sets_made_without_a_model_are_allowed(kind, seed):
     assert feasible.allows(found)
     assert price[found].sum() >= 0.9 * _best(feasible, price)
     assert feasible.allows(random_set(feasible, rng))
-    assert feasible.allows(greedy(model, feasible))
+    assert feasible.allows(greedy(InformationGoal(model), feasible))
 
 
 def test_a_dead_end_is_left_by_another_set():
@@ -166,7 +167,7 @@ def test_impossible_rules_are_reported_in_one_sentence(case):
 def test_greedy_reports_kept_candidates_beyond_a_zone_limit():
     model, _, _ = random_instance("plain", 0)
     with pytest.raises(InfeasibleError):
-        greedy(model, _one_group(model.n_candidates, 2, keep=(0, 1), at_most=((np.arange(3), 1),)))
+        greedy(InformationGoal(model), _one_group(model.n_candidates, 2, keep=(0, 1), at_most=((np.arange(3), 1),)))
 
 
 def test_spacing_as_cliques_or_as_pairs_is_the_same_rule():
