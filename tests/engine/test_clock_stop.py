@@ -5,6 +5,7 @@ import pytest
 from engine_instances import allowed_subsets, brute_information, random_instance
 
 from layout.engine.bound import tighten
+from layout.engine.information_goal import InformationGoal
 from layout.engine.ranking import rank_layouts
 from layout.engine.search import greedy
 
@@ -25,8 +26,8 @@ def test_a_stop_by_the_clock_keeps_every_bound_valid_and_is_recorded(kind):
 @pytest.mark.parametrize("kind", ["plain", "spacing"])
 def test_the_root_bound_itself_records_the_stop(kind):
     model, feasible, _ = random_instance(kind, 2)
-    layout = greedy(model, feasible)
-    cut = tighten(model, feasible, layout, tolerance=1e-12, deadline=-np.inf)
+    layout = greedy(InformationGoal(model), feasible)
+    cut = tighten(InformationGoal(model), feasible, layout, tolerance=1e-12, deadline=-np.inf)
     assert cut.stopped_by_clock
     assert cut.rounds == 1
     assert cut.value >= brute_information(model, allowed_subsets(feasible)).max() - 1e-9

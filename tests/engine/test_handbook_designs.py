@@ -25,6 +25,7 @@ from references.optimal_designs import (
 from layout.engine.bound import tighten
 from layout.engine.feasible import Feasible
 from layout.engine.information import information
+from layout.engine.information_goal import InformationGoal
 from layout.engine.model import LinearModel
 from layout.engine.ranking import rank_layouts
 from layout.engine.relaxation import value_and_gradient
@@ -55,7 +56,9 @@ def _grid_with(support):
 
 def _design(model, start):
     """The relaxed optimum of one sensor: a probability measure over the candidates."""
-    return tighten(model, _pick(model.n_candidates, 1), np.array([start]), tolerance=RELATIVE_GAP, rounds=400)
+    return tighten(
+        InformationGoal(model), _pick(model.n_candidates, 1), np.array([start]), tolerance=RELATIVE_GAP, rounds=400
+    )
 
 
 @pytest.mark.parametrize("degree", sorted(D_POLYNOMIAL))

@@ -6,6 +6,7 @@ from engine_instances import KINDS, allowed_subsets, brute_information, random_i
 
 from layout.engine.bound import certify
 from layout.engine.information import information
+from layout.engine.information_goal import InformationGoal
 from layout.engine.ranking import rank_layouts
 from layout.engine.search import exchange, greedy
 from layout.errors import InfeasibleError
@@ -53,8 +54,8 @@ def _check_every_rank(ranking, model, feasible, places, differ_by):
     sets = allowed_subsets(feasible)
     values = brute_information(model, sets)
 
-    start = greedy(model, feasible)
-    exchanged, value, _ = exchange(model, feasible, start)
+    start = greedy(InformationGoal(model), feasible)
+    exchanged, value, _ = exchange(InformationGoal(model), feasible, start)
     assert feasible.allows(exchanged)
     chain = [ranking.root.value, values.max(), ranking.layouts[0].value, value, information(model, start)]
     assert (np.diff(chain) <= ROUNDING).all()
@@ -79,7 +80,7 @@ def _check_every_rank(ranking, model, feasible, places, differ_by):
 def test_the_root_bound_is_the_tangent_at_the_weights_it_names(kind):
     model, feasible, _ = random_instance(kind, 1)
     root = rank_layouts(model, feasible, starts=2).root
-    limit, relaxed = certify(model, feasible, root.weights)
+    limit, relaxed = certify(InformationGoal(model), feasible, root.weights)
     assert root.value == pytest.approx(limit, rel=1e-12)
     assert root.relaxed == pytest.approx(relaxed, rel=1e-12)
     assert root.value - root.relaxed <= 2e-4 * root.relaxed + ROUNDING  # the ascent's own tolerance
@@ -92,7 +93,7 @@ def test_any_weights_give_a_bound(kind):
     rng = np.random.default_rng(2)
     for _ in range(10):
         weights = rng.random(feasible.n_candidates) * (rng.random(feasible.n_candidates) < 0.5)
-        assert certify(model, feasible, weights)[0] >= best - ROUNDING
+        assert certify(InformationGoal(model), feasible, weights)[0] >= best - ROUNDING
 
 
 @KIND
@@ -141,4 +142,4 @@ def test_greedy_keeps_the_submodular_guarantee_where_noise_is_independent(seed):
     model, feasible, _ = random_instance("plain", seed)
     model = type(model)(model.target, np.zeros((model.n_channels, 0)), model.offset, model.candidate_of_channel)
     best = brute_information(model, allowed_subsets(feasible)).max()
-    assert information(model, greedy(model, feasible)) >= (1 - np.exp(-1)) * best
+    assert information(model, greedy(InformationGoal(model), feasible)) >= (1 - np.exp(-1)) * best

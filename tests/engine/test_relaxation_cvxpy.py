@@ -12,6 +12,7 @@ from engine_instances import cells_of, random_model, spacing_pairs
 
 from layout.engine.bound import tighten
 from layout.engine.feasible import Feasible
+from layout.engine.information_goal import InformationGoal
 from layout.engine.search import greedy
 
 AGREEMENT = 1e-5  # relative; both solvers are asked for more
@@ -56,7 +57,9 @@ def _instance(kind):
 @pytest.mark.parametrize("kind", ["plain", "cells", "spacing", "electrodes with an offset, and blocks"])
 def test_the_relaxed_optimum_is_the_cone_solvers(kind):
     model, feasible = _instance(kind)
-    found = tighten(model, feasible, greedy(model, feasible), tolerance=1e-7, rounds=300)
+    found = tighten(
+        InformationGoal(model), feasible, greedy(InformationGoal(model), feasible), tolerance=1e-7, rounds=300
+    )
     optimum = _solved(model, feasible)
     assert found.relaxed == pytest.approx(optimum, rel=AGREEMENT)
     assert found.value == pytest.approx(optimum, rel=AGREEMENT)
