@@ -122,7 +122,7 @@ def _rule(path: tuple[str | int, ...], finding: dict, raw: dict) -> str:
     kind, ctx = finding["type"], finding.get("ctx", {})
     value = _value(path, raw)
     if kind.startswith("union_tag"):
-        rule = 'must be "electrode" or "magnetometer"'
+        rule = 'must be "electrode", "magnetometer" or "gradiometer"'
     elif kind == "extra_forbidden":
         rule = f"is not a known key ({_suggestion(path, raw)})"
     elif kind == "literal_error":

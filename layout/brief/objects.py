@@ -6,113 +6,94 @@ from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Literal
 
+from layout.brief.objects_goal import BudgetBrief, GoalBrief, ScenariosBrief, SearchBrief
+from layout.brief.objects_head import HeadSizeBrief, SurfacesBrief
+from layout.brief.objects_places import BUILT_IN_ZONES, ExistingBrief, PlacesBrief, ZoneBrief
+from layout.brief.objects_stock import (
+    Axes,
+    ElectrodeBrief,
+    Family,
+    FootprintBrief,
+    GradiometerBrief,
+    MagnetometerBrief,
+    SitesBrief,
+    StockBrief,
+)
+
+__all__ = [
+    "BUILT_IN_ZONES",
+    "Axes",
+    "Brief",
+    "BudgetBrief",
+    "ElectrodeBrief",
+    "ExistingBrief",
+    "Family",
+    "FootprintBrief",
+    "Frame",
+    "GoalBrief",
+    "GradiometerBrief",
+    "HeadBrief",
+    "HeadSizeBrief",
+    "MagnetometerBrief",
+    "NoiseBrief",
+    "Orientation",
+    "PlacesBrief",
+    "RegionBrief",
+    "ScenariosBrief",
+    "SearchBrief",
+    "Side",
+    "SitesBrief",
+    "SourceMesh",
+    "StockBrief",
+    "SurfacesBrief",
+    "ZoneBrief",
+]
+
 SourceMesh = Literal["coarse", "standard", "fine"]
-Frame = Literal["mni152", "head"]
+Frame = Literal["mni152", "head", "files"]  # files: the frame of the head's own surface files
 Side = Literal["left", "right", "both"]
 Orientation = Literal["normal", "free"]
-Family = Literal["10-20", "10-10", "10-5"]
-Axes = Literal["normal", "tangents", "any_of_three", "two_axis", "three_axis"]
-
-
-# Parts of the scalp every head knows without being told; a brief may add its own under other names.
-BUILT_IN_ZONES = ("eyes", "ears", "neck", "face", "forehead")
 
 
 @dataclass(frozen=True)
 class HeadBrief:
     """What head to build. Conductivities [S/m] and radii [m] run from the brain outwards (3 or 4 layers)."""
 
-    kind: Literal["template", "sphere"]
+    kind: Literal["template", "sphere", "surfaces"]
     conductivities: tuple[float, ...]
     source_mesh: SourceMesh = "standard"
     radii: tuple[float, ...] | None = None  # sphere only
     cortex_depth: float | None = None  # sphere only: depth of the source shell under the innermost radius [m]
+    surfaces: SurfacesBrief | None = None  # surfaces only
+    size: HeadSizeBrief | None = None  # template only: None leaves it as it is
+    lead_field_file: Path | None = None  # absolute; instead of computing the candidates' lead field
 
 
 @dataclass(frozen=True)
 class RegionBrief:
-    """A ball of cortex of interest: centre [m] in `frame`, radius [m], net moment [A·m] rms."""
+    """A piece of cortex of interest, and its net moment [A·m] rms.
+
+    Where it lies is said in one way: a ball (centre [m] in `frame`, radius [m], through the air or along the cortex),
+    a label of a label file (name or number), a mask (voxels that are not zero, or that equal `label`) in `frame`,
+    vertex numbers of the cortex's file, in the brief or in a file, or a parcel by its name. Paths are absolute.
+    `frame` means something only for balls and masks.
+    """
 
     name: str
-    centre: tuple[float, float, float]
+    centre: tuple[float, float, float] | None
     frame: Frame
-    radius: float
+    radius: float | None
     side: Side
     moment: float
     coherent: bool = False
     orientation: Orientation = "normal"
-
-
-@dataclass(frozen=True)
-class SitesBrief:
-    """Where sensors of a kind may sit; exactly one source of sites is set. Paths are absolute."""
-
-    family: Family | None = None
-    grid_pitch: float | None = None  # [m]
-    electrodes_tsv: Path | None = None
-    slots_csv: Path | None = None
-
-
-@dataclass(frozen=True)
-class ZoneBrief:
-    """A named part of the scalp: all places within `radius` [m] (straight line) of any of the positions."""
-
-    name: str
-    around: tuple[str, ...]
-    radius: float
-
-
-@dataclass(frozen=True)
-class ElectrodeBrief:
-    """Electrodes of one kind. `count` includes the reference contact. Noise [V rms] in the brief's band."""
-
-    name: str
-    count: int
-    sites: SitesBrief
-    contact_noise: float
-    contact_noise_in: dict[str, float] = field(default_factory=dict)  # zone name -> V rms
-    reference: str = "any"  # "any" or the name of a site that must be in the layout and carries the reference
-    spacing: float = 0.0
-    price: float = 1.0
-    keep_out: tuple[str, ...] = ("eyes", "ears", "neck")
-    only_in: tuple[str, ...] = ()
-    kind: Literal["electrode"] = "electrode"
-
-
-@dataclass(frozen=True)
-class MagnetometerBrief:
-    """Magnetometers of one kind. `noise_density` [T/sqrt(Hz)], lengths [m].
-
-    axes: "normal" (axis along the scalp normal), "tangents" (one of the two tangents is chosen),
-    "any_of_three" (normal or one tangent is chosen), "two_axis" (normal and one tangent, two channels),
-    "three_axis" (three channels). standoff: scalp to sensitive centre when the housing touches the scalp.
-    housing: face width, face depth, length. hair: extra gap between scalp and housing.
-    """
-
-    name: str
-    count: int
-    sites: SitesBrief
-    noise_density: float
-    axes: Axes = "normal"
-    standoff: float = 6.5e-3
-    hair: float = 0.0
-    housing: tuple[float, float, float] = (12.4e-3, 16.6e-3, 24.4e-3)
-    spacing: float = 0.0
-    price: float = 1.0
-    keep_out: tuple[str, ...] = ("eyes", "ears", "neck")
-    only_in: tuple[str, ...] = ()
-    kind: Literal["magnetometer"] = "magnetometer"
-
-
-@dataclass(frozen=True)
-class PlacesBrief:
-    """Zones, kept and forbidden sites (by site name), and the sizes [m] of the built-in keep-out zones."""
-
-    zones: tuple[ZoneBrief, ...] = ()
-    keep: tuple[str, ...] = ()
-    forbid: tuple[str, ...] = ()
-    eye_radius: float = 25e-3
-    ear_radius: float = 25e-3
+    along_cortex: bool = False
+    label_file: Path | None = None
+    label: str | int | None = None
+    mask_nifti: Path | None = None
+    vertices_file: Path | None = None
+    vertices: tuple[int, ...] | None = None
+    parcel: str | None = None
 
 
 @dataclass(frozen=True)
@@ -139,32 +120,40 @@ class NoiseBrief:
 
 
 @dataclass(frozen=True)
-class SearchBrief:
-    """Effort: seeded starts and number of ranked layouts.
-
-    differ_by: sensors by which the ranks differ at least (0: chosen from the count). proof_parts: parts of the tree
-    that branch and bound may examine to narrow the first layout's gap.
-    """
-
-    seed: int = 1
-    starts: int = 20
-    ranked: int = 3
-    differ_by: int = 0
-    proof_parts: int = 100
-    time_allowance: float | None = None  # [s]; None: no clock
-
-
-@dataclass(frozen=True)
 class Brief:
     """Everything the pipeline needs to know about what is wanted."""
 
     title: str
     head: HeadBrief
     regions: tuple[RegionBrief, ...]
-    stock: tuple[ElectrodeBrief | MagnetometerBrief, ...]
+    stock: tuple[StockBrief, ...]
     places: PlacesBrief
     noise: NoiseBrief
-    goal: Literal["information"]
+    goal: GoalBrief
     search: SearchBrief
     sha256: str  # of the brief file's bytes
     folder: Path  # where the brief lies, absolute; paths in its text are relative to it
+    scenarios: ScenariosBrief = field(default_factory=ScenariosBrief)
+    budget: BudgetBrief | None = None
+    existing: ExistingBrief | None = None
+
+    @property
+    def least(self) -> tuple[int, ...]:
+        """The least number of sensors of each stock entry; `count` is the most.
+
+        Where the file says nothing: the count itself, none under a budget, and as few as carry anything where the
+        smallest count that reaches a target is wanted (1, or 2 electrodes: a contact and the reference).
+        """
+        return tuple(
+            least_count(entry.kind, entry.count, entry.count_at_least, self.budget is not None, self.goal.has_target)
+            for entry in self.stock
+        )
+
+
+def least_count(kind: str, most: int, at_least: int | None, has_budget: bool, has_target: bool) -> int:
+    """The least number of sensors of a stock entry, `at_least` where it is given: see `Brief.least`."""
+    if at_least is not None:
+        return at_least
+    if has_budget:
+        return 0
+    return min(most, 2 if kind == "electrode" else 1) if has_target else most

@@ -9,9 +9,11 @@ from pathlib import Path
 from pydantic import ValidationError
 
 from layout.brief.build import build_brief
+from layout.brief.build_own_head import HEAD_FILES
 from layout.brief.messages import first_refusal, shown, where
 from layout.brief.objects import Brief
 from layout.brief.schema import SCHEMA_VERSION, BriefForm
+from layout.brief.schema_regions import REGION_FILES
 from layout.errors import BriefError
 
 LARGEST_FILE = 1_000_000  # bytes
@@ -93,6 +95,18 @@ def _check_files(brief: Brief, raw: dict, path: Path) -> None:
                 given = shown(raw["stock"][i]["sites"][key])
                 place = where(("stock", i, "sites", key), raw)
                 raise _error(path, f"{place} must be a file that exists (seen from the brief), but {given} was given")
+    named = [("head", key) for key in HEAD_FILES if key in raw["head"]]
+    named += [("regions", i, key) for i, one in enumerate(raw["regions"]) for key in REGION_FILES if key in one]
+    for place in named:
+        table = raw["head"] if place[0] == "head" else raw["regions"][place[1]]
+        if not _is_file(brief.folder / table[place[-1]]):
+            rule = "must be a file that exists (seen from the brief)"
+            raise _error(path, f"{where(place, raw)} {rule}, but {shown(table[place[-1]])} was given")
+    layout = brief.existing.layout_tsv if brief.existing is not None else None
+    if layout is not None and not _is_file(layout):
+        given = shown(raw["existing"]["layout_tsv"])
+        rule = "must be a file that exists (seen from the brief)"
+        raise _error(path, f"existing.layout_tsv {rule}, but {given} was given")
 
 
 def _is_file(path: Path) -> bool:

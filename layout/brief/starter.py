@@ -36,18 +36,38 @@ kind = "template"   # "template": an average adult head; "sphere": nested sphere
 # source_mesh = "standard"   # how finely the cortex is cut: "coarse", "standard" or "fine"
 # With kind = "sphere" there are also radii_mm (80, 85, 92 if left out; from the brain outwards) and
 # cortex_depth_mm (12 if left out), the depth of the sources under the innermost radius.
+# The template can be given a head's size: length_mm, breadth_mm, circumference_mm (any of them), or a size of
+# the published survey, such as size = "female 5th percentile" (1st, 5th, 50th, 95th, 99th; female, male).
+# With kind = "surfaces" the head is a person's own, from files (GIFTI, PLY, STL, OFF, OBJ) in one frame:
+#   scalp, outer_skull, inner_skull   files of the layers; those left out are made, and the report says how
+#   cortex                            the file of both sides, or cortex_left and cortex_right
+#   cortex_mask                       GIFTI values, not zero where there is cortex; with two files
+#                                     cortex_mask_left and cortex_mask_right
+#   landmarks                         JSON {"NAS": [x, y, z], "LPA": ..., "RPA": ...} and "inion"; or BIDS
+#   units                             "mm" or "m": of the files
+#   mni152_to_files                   rows of the transform from MNI152 mm to the files; or mni152_file, JSON
+#   surface_vertices, cortex_sources  2562 and 10000 if left out: finer surfaces are thinned to so many
+#   least_gap_mm                      2 if left out: between the layers; smaller gaps are mended
+# lead_field_file is the file of a lead field for these very sites and sensors, instead of computing it.
 """
 
 _REGION_KEYS = """\
-# Regions of interest, one [[regions]] for each: the cortex inside a ball.
+# Regions of interest, one [[regions]] for each: the cortex inside a ball, or said as below.
 #   name        your own words, different for each region
 #   centre_mm   x (right), y (front), z (up) of the ball's centre
 #   frame       "mni152": template coordinates; "head": from the midpoint between the ears' fiducial points
 #   radius_mm   radius of the ball, 1 to 150
+#   along_cortex  true: the radius runs along the cortex, from the source nearest to the centre
 #   side        which hemisphere's cortex counts: "left", "right" or "both"
 #   moment_nam  net dipole moment expected of the whole region, rms, in nA m; 10 is a usual evoked response
 #   coherent    false: its places vary independently; true: they act as one patch
 #   orientation "normal": along the cortex normal; "free": any direction
+# Instead of centre_mm, frame and radius_mm one of these may say which cortex is meant:
+#   label_file     GIFTI labels on the cortex's own vertices, with label, a name in quotes or a number
+#   mask_nifti     a NIfTI mask, with frame; with label only the voxels of that value
+#   vertices       numbers of vertices of the cortex's file, from 0; or vertices_file, a text of them
+#   parcel         name of a gyrus, on the template (needs the extra "parcels")
+# frame may also be "files": that of a person's own surfaces.
 """
 
 _CAP_REGIONS = (
@@ -129,6 +149,7 @@ _ELECTRODE_KEYS = """\
 # What there is to place, one [[stock]] for each kind of sensor. Electrodes:
 #   name             your own words
 #   count            contacts on the head, the reference contact included; the ground is not counted
+#   count_at_least   under a [budget], or with a goal to reach: the fewest; count is then the most
 #   sites            where they may sit, exactly one of these:
 #                    { family = "10-10" }              named positions: "10-20", "10-10" or "10-5"
 #                    { grid_mm = 15 }                  an even grid over the scalp with this pitch
@@ -138,7 +159,12 @@ _ELECTRODE_KEYS = """\
 #   reference        "any": the reference may be any chosen contact (which one changes no result);
 #                    or the name of a site that must be in the layout
 #   spacing_mm       least distance between two sensors of this kind
-#   price            of one sensor, in any currency
+#   footprint        room that a holder takes: { shape = "circle", diameter_mm = 12 } or
+#                    { shape = "rectangle", width_mm = 12, depth_mm = 16, turn_deg = 0 }; left out, none
+#   clearance_mm     least gap between this footprint and any other
+#   disc_mm          diameter of the contact, over which the potential is averaged
+#   gain_error_percent, crosstalk_percent   errors of the channels themselves
+#   price            of one sensor, in any currency; price_per_channel comes on top for each channel
 #   keep_out         zones where this kind must not sit; built in: eyes, ears, neck, face, forehead
 #   only_in          zones outside which this kind must not sit; an empty list allows the whole scalp
 """
@@ -166,6 +192,7 @@ _HELMET_STOCK = """\
 # What there is to place, one [[stock]] for each kind of sensor. Magnetometers:
 #   name             your own words
 #   count            sensors to place
+#   count_at_least   under a [budget], or with a goal to reach: the fewest; count is then the most
 #   sites            where they may sit, exactly one of these:
 #                    { grid_mm = 15 }                  an even grid over the scalp with this pitch
 #                    { slots_csv = "slots.csv" }       the slots of a helmet: a table beside this brief
@@ -175,12 +202,20 @@ _HELMET_STOCK = """\
 #   noise_ft_per_rthz  noise density of one axis, in fT per square root of Hz, one-sided
 #   axes             "normal": the sensitive axis points away from the scalp; "tangents": one of the two
 #                    directions along the scalp is chosen; "any_of_three": the normal or one of them;
-#                    "two_axis": the normal and one of these, two channels; "three_axis": all, three channels
+#                    "two_axis": the normal and one of these, two channels; "three_axis": all, three channels;
+#                    "free": any direction, within tilt_limit_deg of the normal if given; "free_two": any two
+#                    at right angles; or a list such as [[1, 0, 0], [0.7, 0.7, 0]], of which one is chosen,
+#                    each by its components along the normal, to the front and to the left
 #   standoff_mm      scalp to the centre of the sensitive volume when the housing touches the scalp
 #   hair_mm          extra gap between scalp and housing
 #   housing_mm       width and depth of the face towards the scalp, and length
 #   spacing_mm       least distance between two sensors of this kind, so that housings do not collide
-#   price            of one sensor, in any currency
+#   footprint        room on the scalp: "housing" (its face), { shape = "circle", diameter_mm = 12 } or
+#                    { shape = "rectangle", width_mm = 12, depth_mm = 16, turn_deg = 0 }; left out, none
+#   clearance_mm     least gap between this footprint and any other
+#   cell_mm, coil_mm edges of the volume, or diameter of the coil, over which the field is averaged
+#   gain_error_percent, crosstalk_percent   errors of the channels themselves
+#   price            of one sensor, in any currency; price_per_channel comes on top for each channel
 #   keep_out         zones where this kind must not sit; built in: eyes, ears, neck, face, forehead
 #   only_in          zones outside which this kind must not sit; an empty list allows the whole scalp
 [[stock]]
@@ -198,6 +233,9 @@ spacing_mm = 20   # 0 if left out: one sensor per site is then the only rule
 # keep_out = ["eyes", "ears", "neck"]
 # only_in = []
 # A second [[stock]] with kind = "electrode" may follow; the "cap" starter explains its keys.
+# With kind = "gradiometer" there are form ("axial" or "planar"), baseline_mm, gradients (planar:
+# "one_tangent" or "both_tangents") and, instead of noise_ft_per_rthz, noise_ft_per_cm_per_rthz or
+# coil_noise_ft_per_rthz; there are no axes.
 """
 
 _BUDGET_STOCK = (
@@ -221,12 +259,18 @@ only_in = ["band", "behind the ears"]   # left out: the whole scalp
 _PLACES_KEYS = """\
 # Places on the scalp.
 #   keep, forbid   names of sites that must be used, or must not
+#   left_right_pairs   true: a site is used exactly if its mirror image is
+#   ground         a site that the ground takes; it is not measured and not counted
 #   eye_radius_mm, ear_radius_mm   size of the built-in zones round each eye and each ear
 #   [[places.zones]]  a zone of your own, for keep_out, only_in and contact_noise_in_uv of [[stock]]:
-#      name, around (standard positions) and radius_mm (straight distance from any of them)
+#      name, and one of: around (standard positions) with radius_mm (straight distance from any of them);
+#      corners, a polygon: ["AF7", "AF8", "F8", [-50, 60, 40]] (positions, or points in mm in the head frame);
+#      positions, the names of its sites. at_least and at_most say how many sensors it may hold, of the kinds
+#      (names of [[stock]]) or of all
 [places]
 # keep = []
 # forbid = []
+# left_right_pairs = false
 # eye_radius_mm = 25
 # ear_radius_mm = 25
 """
@@ -275,8 +319,38 @@ gradient_ft_per_cm_rms = 5   # changing evenly across the head; 0 if left out
 """
 
 _SEARCH = """\
+# What a layout is judged by.
+#   kind             "information": bits per sample about the regions; "localisation": how far off a source
+#                    would be placed, in mm (a linearised error)
+#   region_weights   { "a region" = 2.0, "another" = 1.0 }: a weighted sum over the regions, for all of them
+#   error_over       localisation: "rms" or "worst" over the sources
+#   error_limits_mm  information: { "a region" = 8 }, errors that must not be passed
+#   position_prior_mm, moment_spread_percent   what is known before measuring, for such errors: 30 mm in each
+#                    direction and 100 % of the moment if left out
+#   reach_bits, reach_mm   a target: the fewest sensors that reach it are looked for, up to count
 [goal]
-# kind = "information"   # bits per sample about the regions
+# kind = "information"
+
+# More cases under which a layout is judged beside the brief's own; each entry of a list is one.
+#   judge            "mean" or "worst" over all cases
+#   conductivities_s_per_m   [[0.33, 0.0042, 0.33], [0.33, 0.03, 0.33]]: one value for each layer of the head
+#   noise_factors, sensor_noise_factors, background_factors   [0.5, 2]: all noise, that of the sensors alone,
+#                    that of the background alone, times this
+#   pose_error_mm, pose_error_degrees   sensors placed and turned wrongly by chance, pose_draws times (8 if
+#                    left out)
+#   any_one_lost     true: judged by what is left when the sensor that matters most fails
+[scenarios]
+# judge = "mean"
+# any_one_lost = false
+
+# With a [budget] the counts of [[stock]] are the most: as many are bought as it pays for. Its keys:
+#   total            what the layout may cost, in the currency of price
+#   block_channels, block_price   amplifiers come in blocks of so many channels at this price each; the
+#                    reference contact is one of the channels
+# With [existing] a layout that is there already counts:
+#   use              "extend": all of it is kept and the rest is added; "trim": only its sensors are chosen
+#   sites            its sites, such as ["Fz", "Cz"], or layout_tsv, a table of electrodes or the sensors.csv
+#                    of an earlier result, beside this brief
 
 [search]
 # seed = 1   # the same seed gives the same layouts
@@ -284,6 +358,8 @@ _SEARCH = """\
 # ranked = 3   # layouts to hand back, 1 to 50
 # differ_by = 0   # sensors in which they must differ at least; 0: chosen from the number of sensors
 # proof_parts = 100   # how far branch and bound may go to narrow the gap; 0: not at all
+# proof_ranks = 1   # how many of the ranked layouts it works on
+# polish = false   # true: after the search, slide the sensors along the scalp
 # With time_allowance_s (seconds) the search stops by the clock; left out, it stops when its work is done.
 """
 

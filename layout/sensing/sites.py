@@ -13,7 +13,7 @@ from layout.anatomy.geodesics import great_circle_distances, landmark_distances
 from layout.anatomy.head import Head
 from layout.anatomy.positions import EARLOBE_NOTE, family_names
 from layout.anatomy.scalp_points import first_hit, normals_at, project, tangents_at
-from layout.brief.objects import ElectrodeBrief, MagnetometerBrief
+from layout.brief.objects_stock import StockBrief
 from layout.errors import FileError
 from layout.sensing.candidates import Sites
 from layout.sensing.electrodes_file import read_electrodes
@@ -50,7 +50,7 @@ class Places:
 
 def find_places(
     head: Head,
-    entry: ElectrodeBrief | MagnetometerBrief,
+    entry: StockBrief,
     standard: dict[str, np.ndarray],
     footprint: Footprint | None,
 ) -> Places:
@@ -70,7 +70,7 @@ def find_places(
         return Places(tuple(f"S{i:03d}" for i in range(1, len(positions) + 1)), positions)
     if sites.electrodes_tsv is not None:
         return _listed_places(head, sites.electrodes_tsv)
-    hair = entry.hair if isinstance(entry, MagnetometerBrief) else 0.0
+    hair = 0.0 if entry.kind == "electrode" else entry.hair
     return _slot_places(head, sites.slots_csv, footprint, hair)
 
 

@@ -60,7 +60,7 @@ BAD = {
     "head of unknown kind": (
         'kind = "sphere"',
         'kind = "cube"',
-        ["head.kind", '"template" or "sphere"', '"cube"'],
+        ["head.kind", '"template", "sphere" or "surfaces"', '"cube"'],
     ),
     "sphere keys on the template": ('"sphere"', '"template"', ["head.radii_mm", '"sphere"', "[80, 85, 92]"]),
     "five layers": ("layers = 3", "layers = 5", ["head.layers", "at most 4", "5"]),
@@ -136,7 +136,7 @@ BAD = {
         "radius_mm = 151",
         ["regions[0].radius_mm", "at most 150", "151"],
     ),
-    "no such frame": ('frame = "head"', 'frame = "mri"', ["regions[0].frame", '"mni152" or "head"', '"mri"']),
+    "no such frame": ('frame = "head"', 'frame = "mri"', ["regions[0].frame", '"mni152", "head"', '"mri"']),
     "no such side": (
         'side = "left"',
         'side = "up"',
@@ -168,7 +168,7 @@ BAD = {
         "[stock]\n",
         ["stock", "list", "{}"],
     ),
-    "sensor without a kind": ('kind = "electrode"\n', "", ["stock[0].kind", '"electrode" or', "missing"]),
+    "sensor without a kind": ('kind = "electrode"\n', "", ["stock[0].kind", '"electrode", ', "missing"]),
     "sensor of unknown kind": (
         'kind = "electrode"',
         'kind = "coil"',
@@ -304,11 +304,6 @@ BAD = {
         ["noise.background.eeg_uv_rms", "greater than 0", "0"],
     ),
     "eyes negative": ("\nuv_rms = 20", "\nuv_rms = -20", ["noise.eyes.uv_rms", "at least 0", "-20"]),
-    "goal not offered yet": (
-        '"information"',
-        '"localisation"',
-        ["goal.kind", "not offered yet", '"localisation"'],
-    ),
     "goal unknown": ('"information"', '"luck"', ["goal.kind", '"information"', '"luck"']),
     "seed negative": ("seed = 1", "seed = -1", ["search.seed", "at least 0", "-1"]),
     "seed a date": ("seed = 1", "seed = 2024-01-01", ["search.seed", "whole number", "2024-01-01"]),

@@ -119,7 +119,36 @@ NEEDS_THE_HEAD = {
     ),
     "spacing that leaves no room": (
         replaced(ELECTRODES_ONLY, "contact_noise_uv", "spacing_mm = 170\ncontact_noise_uv"),
-        ["stock.count", "room", "4 with a spacing_mm of 170"],
+        ["stock.count", "room", "spacing_mm (", "counts given: 4"],
+    ),
+    "zone that cannot hold enough": (
+        with_places('[[places.zones]]\nname = "z"\npositions = ["O1", "O2", "A1"]\nat_least = 3'),
+        ["places.zones 'z'", "at_least", "sites allowed in the zone, 2", "3 was given"],
+    ),
+    "zone of an unknown site": (
+        with_places('[[places.zones]]\nname = "z"\npositions = ["O1", "Ozz"]\nat_most = 1'),
+        ["places.zones 'z'", "positions", "'Ozz'", "near names"],
+    ),
+    "polygon with crossing edges": (
+        with_places('[[places.zones]]\nname = "z"\ncorners = ["F3", "P4", "F4", "P3"]\nat_most = 1'),
+        ["places.zones 'z'", "corners", "without crossing edges"],
+    ),
+    "unknown ground": (with_places('ground = "AFzz"'), ["places.ground", "standard position", "'AFzz'"]),
+    "ground beside a kept site": (
+        with_places('keep = ["Fz"]\nground = "AFz"').replace("contact_noise_uv", "spacing_mm = 50\ncontact_noise_uv"),
+        ["places.keep", "clear of the ground at AFz", "'Fz'"],
+    ),
+    "unknown site in an existing layout": (
+        ELECTRODES_ONLY + '[existing]\nuse = "trim"\nsites = ["Fz", "Cz", "Pz", "C3", "C99"]\n',
+        ["existing.sites", "'C99'"],
+    ),
+    "kept site without a mirror image": (
+        with_places('keep = ["C3"]\nforbid = ["C4"]\nleft_right_pairs = true'),
+        ["places.keep 'C3'", "mirror image", "left_right_pairs"],
+    ),
+    "budget below what is kept": (
+        with_places('keep = ["C3", "C4", "Cz"]') + "[budget]\ntotal = 2.5\n",
+        ["budget.total", "at least 3", "2.5 was given"],
     ),
 }
 

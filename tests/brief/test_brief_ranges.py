@@ -4,6 +4,7 @@ import re
 
 import pytest
 from good_brief import GOOD_BRIEF
+from rich_brief import RICH_BRIEF
 
 from layout.errors import BriefError
 
@@ -42,12 +43,44 @@ RANGES = {
     "search.time_allowance_s": ("allowance_s = 60", "allowance_s = {}", (0.1, 604_800), (0, 604_801)),
 }
 
+# The same for the brief with all rules.
+RICH_RANGES = {
+    "goal.region_weights.left": ("left = 2.0", "left = {}", (0, 1e6), (-0.1, 1.1e6)),
+    "goal.position_prior_mm": ("prior_mm = 25", "prior_mm = {}", (0.1, 1000), (0.09, 1001)),
+    "goal.moment_spread_percent": ("percent = 50", "percent = {}", (0.1, 10_000), (0.09, 10_001)),
+    "goal.error_limits_mm.left": ("left = 8", "left = {}", (0.001, 100), (0, 100.1)),
+    "scenarios.noise_factors[1]": ("[0.5, 2]", "[0.5, {}]", (0.001, 1000), (0.0009, 1001)),
+    "scenarios.pose_error_mm": ("error_mm = 3", "error_mm = {}", (0.1, 30), (0, 30.1)),
+    "scenarios.pose_error_degrees": ("degrees = 5", "degrees = {}", (0.1, 45), (0, 45.1)),
+    "scenarios.pose_draws": ("draws = 4", "draws = {}", (1, 100), (0, 101)),
+    "budget.total": ("total = 5000", "total = {}", (450, 1e12), (449, 1.1e12)),
+    "budget.block_channels": ("block_channels = 8", "block_channels = {}", (1, 4096), (0, 4097)),
+    "budget.block_price": ("block_price = 250", "block_price = {}", (0, 4800), (-1, 1.1e9)),
+    "stock[0].count_at_least": ("at_least = 4\n", "at_least = {}\n", (0, 2, 8), (-1, 9)),
+    "stock[0].price_per_channel": ("per_channel = 40", "per_channel = {}", (0, 1000), (-1, 1.1e9)),
+    "stock[0].footprint.diameter_mm": ("diameter_mm = 12", "diameter_mm = {}", (1, 150), (0.9, 150.1)),
+    "stock[0].clearance_mm": ("clearance_mm = 1", "clearance_mm = {}", (0, 100), (-0.1, 100.1)),
+    "stock[1].footprint.turn_deg": ("turn_deg = 30", "turn_deg = {}", (-180, 180), (-180.1, 180.1)),
+    "places.zones[0].at_most": ("at_most = 3", "at_most = {}", (0, 1024), (-1, 1025)),
+    "places.zones[1].at_least": ("at_least = 1\n", "at_least = {}\n", (0, 12), (-1, 13)),
+    "search.proof_ranks": ("proof_ranks = 2", "proof_ranks = {}", (1, 3), (0, 4)),
+}
+
+
+def assert_range(load_text, text, key, line, opened, allowed, refused):
+    assert line in text
+    for value in allowed:
+        load_text(text.replace(line, opened.format(value), 1))
+    for value in refused:
+        with pytest.raises(BriefError, match=rf": {re.escape(key)} .*, but {re.escape(str(value))} was given"):
+            load_text(text.replace(line, opened.format(value), 1))
+
 
 @pytest.mark.parametrize(("key", "line", "opened", "allowed", "refused"), [(k, *v) for k, v in RANGES.items()])
 def test_range(load_text, key, line, opened, allowed, refused):
-    assert line in GOOD_BRIEF
-    for value in allowed:
-        load_text(GOOD_BRIEF.replace(line, opened.format(value), 1))
-    for value in refused:
-        with pytest.raises(BriefError, match=rf": {re.escape(key)} .*, but {re.escape(str(value))} was given"):
-            load_text(GOOD_BRIEF.replace(line, opened.format(value), 1))
+    assert_range(load_text, GOOD_BRIEF, key, line, opened, allowed, refused)
+
+
+@pytest.mark.parametrize(("key", "line", "opened", "allowed", "refused"), [(k, *v) for k, v in RICH_RANGES.items()])
+def test_range_in_a_rich_brief(load_text, key, line, opened, allowed, refused):
+    assert_range(load_text, RICH_BRIEF, key, line, opened, allowed, refused)

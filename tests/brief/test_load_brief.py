@@ -9,7 +9,7 @@ from typing import Literal, get_args, get_origin, get_type_hints
 import pytest
 from good_brief import GOOD_BRIEF
 
-from layout.brief import objects, schema
+from layout.brief import objects, schema_common, schema_head, schema_regions, schema_stock
 from layout.brief.parse import load_brief
 from layout.errors import BriefError
 
@@ -101,7 +101,8 @@ def test_keys_left_out_take_the_defaults_of_the_objects(load_text):
         for field in dataclasses.fields(part):
             if field.default is not dataclasses.MISSING:
                 assert getattr(part, field.name) == field.default
-    assert brief.goal == "information"
+    assert brief.goal == objects.GoalBrief()
+    assert brief.goal.kind == "information"
 
 
 @pytest.mark.parametrize(
@@ -207,7 +208,7 @@ def forms():
     def below(form):
         return [form, *(f for sub in form.__subclasses__() for f in below(sub))]
 
-    return below(schema.Form)
+    return below(schema_common.Form)
 
 
 def test_choices_of_the_file_are_the_choices_of_the_objects():
@@ -217,10 +218,10 @@ def test_choices_of_the_file_are_the_choices_of_the_objects():
         return {key: get_args(hint) for key, hint in hints.items() if get_origin(hint) is Literal}
 
     pairs = [
-        (schema.HeadForm, objects.HeadBrief),
-        (schema.RegionForm, objects.RegionBrief),
-        (schema.ElectrodeForm, objects.ElectrodeBrief),
-        (schema.MagnetometerForm, objects.MagnetometerBrief),
+        (schema_head.HeadForm, objects.HeadBrief),
+        (schema_regions.RegionForm, objects.RegionBrief),
+        (schema_stock.ElectrodeForm, objects.ElectrodeBrief),
+        (schema_stock.MagnetometerForm, objects.MagnetometerBrief),
     ]
     for form, cls in pairs:
         taken = choices(get_type_hints(form))

@@ -6,12 +6,14 @@ from pathlib import Path
 from good_brief import GOOD_BRIEF
 from hypothesis import given, settings
 from hypothesis import strategies as st
+from rich_brief import RICH_BRIEF
 
 from layout.brief.objects import Brief
 from layout.brief.parse import load_brief
 from layout.errors import BriefError
 
 LINES = GOOD_BRIEF.splitlines()
+RICH_LINES = RICH_BRIEF.splitlines()
 VALUES = st.sampled_from(
     [
         "0",
@@ -38,6 +40,10 @@ VALUES = st.sampled_from(
         "[1,2]",
         "[1,2,3]",
         '["Cz"]',
+        "[[1,0,0],[0,1,0],[0,0,1]]",
+        '["Cz",[1,2,3],[1,2]]',
+        "{left=1}",
+        '{shape="housing"}',
         "[{}]",
         "{}",
         "{a=1}",
@@ -51,8 +57,9 @@ VALUES = st.sampled_from(
         '"\U0001f9e0"',
     ]
 )
-KEYS = sorted({line.split(" = ")[0] for line in LINES if " = " in line} | {"x", "''", '"\\n"', "a.b", "kind.x"})
-TABLES = sorted({line for line in LINES if line.startswith("[")} | {"[stock]", "[regions]", "[[head]]", "[x]"})
+ALL_LINES = LINES + RICH_LINES
+KEYS = sorted({line.split(" = ")[0] for line in ALL_LINES if " = " in line} | {"x", "''", '"\\n"', "a.b", "kind.x"})
+TABLES = sorted({line for line in ALL_LINES if line.startswith("[")} | {"[stock]", "[regions]", "[[head]]", "[x]"})
 LINE = st.one_of(
     st.sampled_from(LINES),
     st.sampled_from(TABLES),
@@ -91,6 +98,14 @@ def test_lines_changed_at_random(edits):
 def test_one_value_changed_at_random(i, value):
     key = LINES[i].split(" = ")[0]
     assert_brief_or_one_sentence("\n".join([*LINES[:i], f"{key} = {value}", *LINES[i + 1 :]]).encode())
+
+
+@settings(max_examples=400, deadline=None)
+@given(st.sampled_from([i for i, line in enumerate(RICH_LINES) if " = " in line]), VALUES)
+def test_one_value_of_a_rich_brief_changed_at_random(i, value):
+    key = RICH_LINES[i].split(" = ")[0]
+    text = "\n".join([*RICH_LINES[:i], f"{key} = {value}", *RICH_LINES[i + 1 :]])
+    assert_brief_or_one_sentence(text.encode())
 
 
 @settings(max_examples=100, deadline=None)

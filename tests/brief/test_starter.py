@@ -5,7 +5,7 @@ import re
 
 import pytest
 
-from layout.brief import schema
+from layout.brief import schema_common, schema_stock
 from layout.brief.starter import STARTER_KINDS, starter_brief
 from layout.errors import BriefError
 
@@ -31,12 +31,16 @@ def test_taking_the_comment_sign_away_changes_nothing(load_text, kind):
     assert dataclasses.replace(load_text(full), sha256=as_given.sha256) == as_given
 
 
+def below(form):
+    return [one for sub in form.__subclasses__() for one in (sub, *below(sub))]
+
+
 @pytest.mark.parametrize("kind", STARTER_KINDS)
 def test_starter_explains_every_key_it_could_use(kind):
     text = starter_brief(kind)
-    sensor = schema.MagnetometerForm if kind == "helmet" else schema.ElectrodeForm
-    other = {schema.MagnetometerForm, schema.ElectrodeForm} - {sensor}
-    forms = [f for f in (*schema.Form.__subclasses__(), *schema.StockForm.__subclasses__()) if f not in other]
+    housed = {schema_stock.HousedForm, *below(schema_stock.HousedForm)}
+    other = {schema_stock.ElectrodeForm} if kind == "helmet" else housed
+    forms = [form for form in below(schema_common.Form) if form not in other]
     keys = {field.alias or key for form in forms for key, field in form.model_fields.items()}
     if kind != "helmet":
         keys -= {"slots_csv"}

@@ -9,6 +9,7 @@ from layout.anatomy.head import Head, Landmarks, Sources, Surface
 from layout.brief.objects import (
     Brief,
     ElectrodeBrief,
+    GoalBrief,
     HeadBrief,
     MagnetometerBrief,
     NoiseBrief,
@@ -49,7 +50,7 @@ def brief(*stock, **places) -> Brief:
         stock=stock,
         places=PlacesBrief(**{"eye_radius": 25e-3, **places}),
         noise=NoiseBrief((1.0, 40.0)),
-        goal="information",
+        goal=GoalBrief(),
         search=SearchBrief(),
         sha256="",
         folder=Path("."),
