@@ -12,11 +12,12 @@ from pathlib import Path
 import numpy as np
 import platformdirs
 
-from layout.anatomy.head import Head, Landmarks, Sources, Surface
+from layout.anatomy.head import CortexVertices, Head, Landmarks, Sources, Surface
 
 FOLDER_VARIABLE = "SCALPSITE_CACHE"
-FORMAT = 1  # of the file; part of its digest
+FORMAT = 2  # of the file; part of its digest
 SURFACES = ("scalp", "outer_skull", "inner_skull")
+TRANSFORMS = ("mni_to_head", "files_to_head")
 
 
 class DamagedFileError(Exception):
@@ -57,8 +58,12 @@ def _to_arrays(head: Head) -> dict[str, np.ndarray]:
         arrays |= {f"{name}_vertices": surface.vertices, f"{name}_faces": surface.faces}
     arrays |= {f"landmarks_{name}": point for name, point in vars(head.landmarks).items()}
     arrays |= {f"cortex_{name}": array for name, array in vars(head.cortex).items()}
-    if head.mni_to_head is not None:
-        arrays["mni_to_head"] = head.mni_to_head
+    arrays |= {name: getattr(head, name) for name in TRANSFORMS if getattr(head, name) is not None}
+    if head.cortex_surface is not None:
+        surface = head.cortex_surface
+        arrays |= {"mesh_vertices": surface.vertices, "mesh_faces": surface.faces}
+    if head.cortex_vertices is not None:
+        arrays |= {f"given_{name}": np.asarray(array) for name, array in vars(head.cortex_vertices).items()}
     if head.sphere is not None:
         arrays["sphere_centre"], arrays["sphere_radii"] = head.sphere
     return arrays
@@ -69,13 +74,18 @@ def _from_arrays(arrays: dict[str, np.ndarray]) -> Head:
         return {name.removeprefix(prefix): array for name, array in arrays.items() if name.startswith(prefix)}
 
     sphere = (arrays["sphere_centre"], arrays["sphere_radii"]) if "sphere_radii" in arrays else None
+    given = group("given_")
+    if given:
+        given["one_file"] = bool(given["one_file"])
     return Head(
         name=str(arrays["name"]),
         **{name: Surface(**group(f"{name}_")) for name in SURFACES},
         landmarks=Landmarks(**group("landmarks_")),
         cortex=Sources(**group("cortex_")),
         eyes=arrays["eyes"],
-        mni_to_head=arrays.get("mni_to_head"),
+        **{name: arrays.get(name) for name in TRANSFORMS},
+        cortex_surface=Surface(**mesh) if (mesh := group("mesh_")) else None,
+        cortex_vertices=CortexVertices(**given) if given else None,
         sphere=sphere,
         normal_orientation=bool(arrays["normal_orientation"]),
         notes=tuple(str(note) for note in arrays["notes"]),

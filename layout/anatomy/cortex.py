@@ -21,7 +21,7 @@ from scipy.sparse.csgraph import connected_components, dijkstra
 
 from layout.anatomy.cortex_files import Hemisphere
 from layout.anatomy.frame import apply
-from layout.anatomy.head import Sources, Surface
+from layout.anatomy.head import CortexVertices, Sources, Surface
 from layout.anatomy.mesh_graph import (
     at_face_centres,
     edges,
@@ -30,6 +30,7 @@ from layout.anatomy.mesh_graph import (
     parent_faces,
     vertex_areas,
 )
+from layout.anatomy.nearest_alike import nearest_alike
 from layout.units import MM
 
 PARENT_VERTICES = 2562
@@ -57,6 +58,29 @@ def cortex_sources(hemispheres: tuple[Hemisphere, ...], file_to_head: np.ndarray
         side=np.concatenate([np.full(len(a), s, dtype=np.int8) for s, a in zip(sides, areas, strict=True)]),
         faces=np.vstack([f + start for f, start in zip(faces, starts, strict=True)]),
     )
+
+
+def cortex_mesh(hemispheres: tuple[Hemisphere, ...], file_to_head: np.ndarray) -> Surface:
+    """The closed middle surfaces of both sides in the head frame, wall between the hemispheres included."""
+    vertices = [apply(file_to_head, (side.outer + side.inner) / 2 * MM) for side in hemispheres]
+    starts = np.cumsum([0] + [len(part) for part in vertices[:-1]])
+    faces = [side.faces + start for side, start in zip(hemispheres, starts, strict=True)]
+    return Surface(np.vstack(vertices), np.vstack(faces))
+
+
+def cortex_vertices(hemispheres: tuple[Hemisphere, ...], mesh: Surface, sources: Sources) -> CortexVertices:
+    """The files' vertices with the sources that stand for them; mesh: from `cortex_mesh`."""
+    wall = np.concatenate([not_cortex(side) for side in hemispheres])
+    side = np.concatenate([np.full(len(one.outer), one.side, dtype=np.int8) for one in hemispheres])
+    source = np.full(len(wall), -1)
+    for one in hemispheres:
+        asked, known = np.flatnonzero((side == one.side) & ~wall), np.flatnonzero(sources.side == one.side)
+        nearest = nearest_alike(
+            mesh.vertices[asked], mesh.normals[asked], sources.positions[known], sources.normals[known]
+        )
+        source[asked] = known[nearest]
+    number = np.concatenate([np.arange(len(one.outer)) for one in hemispheres])
+    return CortexVertices(mesh.vertices, vertex_areas(mesh), side, number, source, one_file=False)
 
 
 def not_cortex(side: Hemisphere) -> np.ndarray:

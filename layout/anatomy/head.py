@@ -65,6 +65,23 @@ class Sources:
 
 
 @dataclass(frozen=True)
+class CortexVertices:
+    """The vertices of the cortex's files, for labels and masks that are given on them. All arrays have n_vertices rows.
+
+    positions (n, 3) [m]; areas (n,) [m²] of the surface around each; side (n,) int8, -1 left, +1 right; number (n,):
+    which vertex of its file it is, from 0; source (n,): the source that stands for it, -1 where there is no cortex.
+    one_file: numbers run through both sides; else each side has its own.
+    """
+
+    positions: np.ndarray
+    areas: np.ndarray
+    side: np.ndarray
+    number: np.ndarray
+    source: np.ndarray
+    one_file: bool
+
+
+@dataclass(frozen=True)
 class Head:
     """A head ready for lead fields.
 
@@ -72,6 +89,9 @@ class Head:
     eyes (2, 3) [m]: centres of the left and right eyeball. sphere: (centre (3,), radii (n_layers,)) for a head that IS
     a layered sphere, None for an anatomical head. normal_orientation is False where cortical normals mean nothing.
     notes: sentences about what this head cannot represent, printed beside results.
+    cortex_surface: the mesh the sources lie on, both sides, for ways along the cortex (not always closed);
+    cortex_vertices: the vertices of the cortex's files; both None for a sphere. files_to_head (4, 4): metres in the
+    frame of the head's own files to metres in the head frame, None for a head without own files.
     """
 
     name: str
@@ -85,6 +105,9 @@ class Head:
     sphere: tuple[np.ndarray, np.ndarray] | None = None
     normal_orientation: bool = True
     notes: tuple[str, ...] = ()
+    cortex_surface: Surface | None = None
+    cortex_vertices: CortexVertices | None = None
+    files_to_head: np.ndarray | None = None
 
 
 @dataclass(frozen=True)

@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 
 from layout.anatomy import template_recipe as recipe
-from layout.anatomy.cortex import cortex_sources
+from layout.anatomy.cortex import cortex_mesh, cortex_sources, cortex_vertices
 from layout.anatomy.cortex_files import cortex_folder, read_cortex
 from layout.anatomy.frame import apply, head_frame
 from layout.anatomy.head import Head, Landmarks, Surface
@@ -42,16 +42,19 @@ def build_template(source_mesh: str) -> Head:
         return Surface(apply(mni_to_head, (vertices + recipe.CENTRE) * MM), layers.faces)
 
     file_to_head = mni_to_head @ _in_metres(recipe.MNI305_TO_MNI152)
+    cortex, mesh = cortex_sources(hemispheres, file_to_head, source_mesh), cortex_mesh(hemispheres, file_to_head)
     return Head(
         name="template",
         scalp=surface(layers.scalp),
         outer_skull=surface(layers.outer_skull),
         inner_skull=surface(layers.inner_skull),
         landmarks=Landmarks(**{name: apply(mni_to_head, getattr(in_mni, name)) for name in points}),
-        cortex=cortex_sources(hemispheres, file_to_head, source_mesh),
+        cortex=cortex,
         eyes=apply(mni_to_head, np.array(recipe.EYES) * MM),
         mni_to_head=mni_to_head,
         notes=NOTES,
+        cortex_surface=mesh,
+        cortex_vertices=cortex_vertices(hemispheres, mesh, cortex),
     )
 
 

@@ -43,16 +43,16 @@ def build_layers(pial: np.ndarray) -> Layers:
         [
             cortex,
             cortex * [-1, 1, 1],
-            _shell(recipe.CEREBELLUM, directions),
-            _shell(recipe.BRAINSTEM, directions),
+            shell(recipe.CEREBELLUM, directions),
+            shell(recipe.BRAINSTEM, directions),
         ]
     )
     hull = smooth_radius(directions, hull_radius(brain, directions), recipe.HARMONIC_DEGREE, recipe.HARMONIC_PENALTY)
-    csf, skull, skin = _thickness(directions)
+    csf, skull, skin = thickness(directions)
     inner = _offset(hull[:, None] * directions, faces, csf)
     inner = lift_over(inner, faces, cortex, recipe.PIAL_CLEARANCE)
     outer = _offset(inner, faces, skull)
-    scalp = _with_face_and_neck(_offset(outer, faces, skin), faces, directions)
+    scalp = with_face_and_neck(_offset(outer, faces, skin), faces, directions)
     return Layers(inner, outer, scalp, faces)
 
 
@@ -64,24 +64,30 @@ def project_on_scalp(layers: Layers, point: tuple[float, float, float]) -> np.nd
     return radius[0] * ray + recipe.CENTRE
 
 
-def _shell(ellipsoid: recipe.Ellipsoid, directions: np.ndarray) -> np.ndarray:
+def shell(ellipsoid: recipe.Ellipsoid, directions: np.ndarray) -> np.ndarray:
+    """Points (n, 3) [mm, about recipe.CENTRE] of an ellipsoid in directions (n, 3) from its own centre."""
     return np.array(ellipsoid.centre) + np.array(ellipsoid.semi_axes) * directions - recipe.CENTRE
 
 
-def _thickness(directions: np.ndarray) -> np.ndarray:
+def thickness(directions: np.ndarray) -> np.ndarray:
+    """Fluid, skull and skin (3, n) [mm] in directions (n, 3) from recipe.CENTRE."""
     anchors = np.array([anchor.direction for anchor in recipe.ANCHORS.values()], dtype=float)
     values = np.array([anchor[1:] for anchor in recipe.ANCHORS.values()], dtype=float)
     return blend(directions, anchors, values, recipe.ANCHOR_CONCENTRATION).T
 
 
-def _offset(vertices: np.ndarray, faces: np.ndarray, thickness: np.ndarray) -> np.ndarray:
-    return vertices + thickness[:, None] * Surface(vertices, faces).normals
+def _offset(vertices: np.ndarray, faces: np.ndarray, distance: np.ndarray) -> np.ndarray:
+    return vertices + distance[:, None] * Surface(vertices, faces).normals
 
 
-def _with_face_and_neck(scalp: np.ndarray, faces: np.ndarray, directions: np.ndarray) -> np.ndarray:
+def with_face_and_neck(scalp: np.ndarray, faces: np.ndarray, directions: np.ndarray) -> np.ndarray:
+    """A star-shaped scalp (n, 3) [mm, about recipe.CENTRE] drawn out low down to a rough face and neck.
+
+    directions (m, 3): of the points of the face's and neck's ellipsoids.
+    """
     radius = np.linalg.norm(scalp, axis=1)
     rays = scalp / radius[:, None]
-    body = np.vstack([scalp, _shell(recipe.FACE, directions), _shell(recipe.NECK, directions)])
+    body = np.vstack([scalp, shell(recipe.FACE, directions), shell(recipe.NECK, directions)])
     drawn_out = hull_radius(body, rays)
     fade = np.clip((recipe.LOW_START - rays[:, 2]) / (recipe.LOW_START - recipe.LOW_FULL), 0, 1)
     fade = fade * fade * (3 - 2 * fade)
