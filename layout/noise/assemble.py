@@ -28,9 +28,12 @@ def assemble_noise(
     labels (n_sources,): patches; areas (n_sources,) [m²]: of background at each source;
     sensor_sd (n_channels,) [V or T] of a single epoch.
     """
+    points = channels.points
     parts = {
         "background": calibration.density * background_columns(channels, cortex, labels, areas),
-        "surroundings": surroundings_columns(channels.positions, channels.axes, noise.field_rms, noise.gradient_rms),
+        "surroundings": channels.combine(
+            surroundings_columns(points.positions, points.axes, noise.field_rms, noise.gradient_rms)
+        ),
     }
     if calibration.eye:
         parts["eyes"] = eye_columns(channels.eye_gain(cortex.sphere, cortex.head), calibration.eye)

@@ -2,28 +2,76 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, fields, replace
 
 import numpy as np
+from scipy.spatial.transform import Rotation
 
 from layout.anatomy.head import Head
-from layout.physics.lead_field import LeadField, compute_lead_field, eye_field, moved_onto_spheres
+from layout.physics.lead_field import (
+    LeadField,
+    PlacedPoints,
+    compute_lead_field,
+    eye_field,
+    moved_onto_spheres,
+    place_channels,
+    place_pickup,
+)
 from layout.physics.sphere_model import Displacements, MappedCortex, SphereModel
 from layout.sensing.candidates import Candidates
+from layout.sensing.pickup import Pickup, point_pickup
 
 
 @dataclass(frozen=True)
 class Channels:
     """n channels in the head frame: positions (n, 3) [m], unit axes (n, 3) (zeros: electrodes), is_electrode (n,),
-    normals (n, 3) of the scalp at their site."""
+    normals (n, 3) of the scalp at their site.
+
+    pickup: the points of which each channel is a weighted sum, its position being their centre (axial gradiometers:
+    that of the near coil); None where every channel is a point. Whatever is linear in the field is computed for
+    `points` and then combined: combine(f(points)), for a lead field, a matrix on the sensors' side or a noise source.
+    """
 
     positions: np.ndarray
     axes: np.ndarray
     is_electrode: np.ndarray
     normals: np.ndarray
+    pickup: Pickup | None = None
 
     def __len__(self) -> int:
         return len(self.positions)
+
+    @property
+    def points(self) -> Channels:
+        """The integration points of all channels, each as a channel of its own."""
+        if self.pickup is None:
+            return self
+        owner = self.pickup.channel
+        return Channels(self.pickup.positions, self.pickup.axes, self.is_electrode[owner], self.normals[owner])
+
+    def combine(self, rows: np.ndarray) -> np.ndarray:
+        """Readings (n, ...) of the channels from those of their `points` (n_points, ...)."""
+        return rows if self.pickup is None else self.pickup.combine(rows)
+
+    def moved(self, positions: np.ndarray, turns: np.ndarray, normals: np.ndarray) -> Channels:
+        """The channels as rigid bodies at other positions (n, 3) [m], turned there about their own rotation vectors
+        turns (n, 3) [rad]; normals (n, 3): of the scalp there.
+        """
+        rotations = Rotation.from_rotvec(turns).as_matrix()
+        axes, pickup = np.einsum("nij,nj->ni", rotations, self.axes), self.pickup
+        if pickup is not None:
+            owner = pickup.channel
+            away = np.einsum("pij,pj->pi", rotations[owner], pickup.positions - self.positions[owner])
+            turned = np.einsum("pij,pj->pi", rotations[owner], pickup.axes)
+            pickup = replace(pickup, positions=positions[owner] + away, axes=turned)
+        return Channels(positions, axes, self.is_electrode, normals, pickup)
+
+    def on_spheres(self, sphere: SphereModel, head: Head) -> PlacedPoints:
+        """All integration points as the quick model places them."""
+        placed = place_channels(sphere, head, self.positions, self.axes, self.is_electrode, self.normals)
+        if self.pickup is None:
+            return placed
+        return place_pickup(sphere, head, self.positions, self.normals, placed, self.pickup)
 
     def lead_field(self, cortex: MappedCortex, sources: np.ndarray, free: bool) -> LeadField:
         """Lead field to the numbered sources of the cortex, along their normals or free."""
@@ -35,6 +83,7 @@ class Channels:
             self.is_electrode,
             self.normals,
             cortex.sources.some(sources, free),
+            self.pickup,
         )
 
     def displacements(self, cortex: MappedCortex) -> Displacements:
@@ -51,13 +100,13 @@ class Channels:
 
     def eye_gain(self, sphere: SphereModel, head: Head) -> np.ndarray:
         """Gain (n, 2, 3) [V or T per A·m] to a free dipole at each eye."""
-        return eye_field(sphere, head, self.positions, self.axes, self.is_electrode, self.normals)
+        return eye_field(sphere, head, self.positions, self.axes, self.is_electrode, self.normals, self.pickup)
 
 
 def candidate_channels(candidates: Candidates) -> Channels:
     """The channels of all candidates."""
-    normals = candidates.sites.normals[candidates.site[candidates.candidate_of_channel]]
-    return Channels(candidates.positions, candidates.axes, candidates.is_electrode, normals)
+    normals = candidates.sites.normals[candidates.site_of_channel]
+    return Channels(candidates.positions, candidates.axes, candidates.is_electrode, normals, candidates.pickup)
 
 
 def electrodes_at(positions: np.ndarray) -> Channels:
@@ -73,4 +122,12 @@ def normal_magnetometers_above(positions: np.ndarray, normals: np.ndarray, gap: 
 
 def joined(*parts: Channels) -> Channels:
     """The channels of all parts, one after the other."""
-    return Channels(*(np.concatenate([vars(part)[name] for part in parts]) for name in vars(parts[0])))
+    arrays = ("positions", "axes", "is_electrode", "normals")
+    together = Channels(*(np.concatenate([getattr(part, name) for part in parts]) for name in arrays))
+    if all(part.pickup is None for part in parts):
+        return together
+    pickups = [part.pickup or point_pickup(part.positions, part.axes) for part in parts]
+    first = np.cumsum([0, *(len(part) for part in parts[:-1])])
+    shifted = [replace(pickup, channel=pickup.channel + start) for pickup, start in zip(pickups, first, strict=True)]
+    columns = (np.concatenate([getattr(one, field.name) for one in shifted]) for field in fields(Pickup))
+    return replace(together, pickup=Pickup(*columns))

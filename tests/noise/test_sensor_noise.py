@@ -4,6 +4,7 @@ from dataclasses import replace
 
 import numpy as np
 import pytest
+from references import gradiometers as ref
 from studies import BAND, SPHERE, TWO_REGIONS, coils, cups, study_of
 
 from layout.noise.sensor import sensor_noise
@@ -44,3 +45,14 @@ def test_contacts_by_zone_the_last_one_named_wins(study):
     assert by_site["Fp2"] == pytest.approx(0.5e-6, abs=0)
     assert by_site["Fp1"] == pytest.approx(3e-6, abs=0)  # in both zones
     assert {by_site[name] for name in ("Cz", "Pz", "C3", "Oz", "F3")} == {1e-6}
+
+
+def test_the_difference_of_two_coils_is_root_two_times_as_noisy():
+    """Nardelli et al. 2020: 10 fT/sqrt(Hz) each, uncorrelated, baseline 20 mm."""
+    pair = (
+        '[[stock]]\nkind = "gradiometer"\nname = "pair"\ncount = 2\nsites = { family = "10-20" }\nform = "planar"\n'
+        f"baseline_mm = {ref.PAIR_BASELINE_MM}\nhousing_mm = [28, 28, 30]\n"
+        f"coil_noise_ft_per_rthz = {ref.COIL_FT_PER_RTHZ}\n"
+    )
+    noise = noise_of(study_of(SPHERE, TWO_REGIONS, pair, BAND))
+    np.testing.assert_allclose(noise / 1e-15 / np.sqrt(40 - 1), ref.PAIR_FT_PER_RTHZ, rtol=1e-12)
