@@ -49,7 +49,7 @@ def brief_of(*tables: str) -> Brief:
     """The brief of these tables of TOML."""
     with tempfile.TemporaryDirectory() as folder:
         path = Path(folder) / "study.toml"
-        path.write_text("\n".join(['schema = 1\ntitle = "A study"', *tables, '[goal]\nkind = "information"\n']))
+        path.write_text("\n".join(['schema = 1\ntitle = "A study"', *tables]))
         return load_brief(path)
 
 

@@ -9,7 +9,8 @@ from scipy.optimize import linprog
 from studies import BAND, FRONTAL, HANDS, SPHERE, TEMPLATE, TWO_REGIONS, brief_of, coils, cups, problem_of, study_of
 
 from layout.anatomy.head import Region
-from layout.design import _region_columns, build_problem, design
+from layout.design import build_problem, design
+from layout.design.problem import region_columns
 from layout.engine.information import information
 from layout.physics.channels import candidate_channels
 from layout.physics.nearest_point import nearest_on_surface
@@ -80,10 +81,10 @@ def check_design(tables):
         assert [sensor.number for sensor in layout.sensors] == list(range(1, len(chosen) + 1))
         for sensor in layout.sensors:
             without = chosen[chosen != sensor.candidate]
-            assert sensor.marginal_bits == pytest.approx(layout.value - bits(audit, without), abs=1e-8)
+            assert sensor.worth == pytest.approx(layout.value - bits(audit, without), abs=1e-8)
         for name, columns in problem.target_columns.items():
-            assert layout.per_region_bits[name] == pytest.approx(bits(audit, chosen, columns), rel=1e-7)
-        assert max(layout.per_region_bits.values()) <= layout.value + 1e-12
+            assert layout.per_region[name].bits == pytest.approx(bits(audit, chosen, columns), rel=1e-7)
+        assert max(figure.bits for figure in layout.per_region.values()) <= layout.value + 1e-12
         prices = {entry.name: entry.price for entry in result.brief.stock}
         assert layout.cost == pytest.approx(sum(prices[sensor.kind] for sensor in layout.sensors))
         for earlier in result.layouts[:row]:
@@ -106,7 +107,7 @@ def test_electrodes_on_a_sphere():
     assert [sensor.role for sensor in result.layouts[0].sensors].count("reference") == 1
     assert result.layouts[0].equals_even_spread_of >= 6
     assert result.baselines[0].note == ""
-    assert list(result.notes) == ["Sites", "Head and model", "Strengths and noise", "Ranking"]
+    assert list(result.notes) == ["Sites", "Head and model", "Strengths and noise", "Goal", "Ranking"]
     assert not any("tangent" in note for note in result.notes["Sites"])
     assert "at least 1 sensor;" in result.notes["Ranking"][0]
 
@@ -183,7 +184,7 @@ def test_net_moment_of_a_region_has_the_rms_asked_for(coherent):
     rng = np.random.default_rng(11)
     areas = rng.uniform(1e-6, 9e-6, 70)
     region = Region("any", np.arange(70), areas, 25e-9, coherent, False, np.zeros(3))
-    sees_the_sum = _region_columns(region, np.ones((1, 70)), areas)
+    sees_the_sum = region_columns(region, np.ones((1, 70)), areas)
     net = (sees_the_sum @ rng.standard_normal((sees_the_sum.shape[1], 400_000)))[0]
     assert np.sqrt((net**2).mean()) == pytest.approx(25e-9, rel=0.01, abs=0)
     assert np.sqrt((sees_the_sum**2).sum()) == pytest.approx(25e-9, rel=1e-12, abs=0)

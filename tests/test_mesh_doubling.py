@@ -13,6 +13,7 @@ from studies import BAND, TEMPLATE, brief_of, coils, cups, region
 
 from layout.design import build_problem, lay_out_study
 from layout.engine.information import information
+from layout.engine.information_goal import InformationGoal
 from layout.engine.search import exchange, greedy
 from layout.evidence.baselines import evenly
 
@@ -48,7 +49,8 @@ def change(before, after):
 
 def layouts(study, model):
     feasible = study.feasible
-    chosen, _, _ = exchange(model, feasible, greedy(model, feasible))
+    goal = InformationGoal(model)
+    chosen, _, _ = exchange(goal, feasible, greedy(goal, feasible))
     return chosen, evenly(study.candidates.sites.positions, study.candidates.site, feasible, feasible.counts)
 
 

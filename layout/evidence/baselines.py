@@ -3,15 +3,14 @@
 from __future__ import annotations
 
 from collections.abc import Callable
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 
 import numpy as np
 from scipy.spatial import cKDTree
 from threadpoolctl import threadpool_limits
 
 from layout.engine.feasible import Feasible
-from layout.engine.information import information
-from layout.engine.model import LinearModel
+from layout.engine.goal import Goal
 from layout.engine.search import random_set
 from layout.evidence.spread import even_spread
 from layout.units import MM
@@ -24,7 +23,7 @@ NEAR = 12 * MM  # a standard position farther than this from every site is not a
 
 @dataclass(frozen=True)
 class Yardstick:
-    """name; value [bits]; chosen candidates, None where there is no single layout; note: what to know about it."""
+    """name; value (a score); chosen candidates, None where there is no single layout; note: what to know about it."""
 
     name: str
     value: float
@@ -51,26 +50,28 @@ def evenly(points: np.ndarray, site: np.ndarray, feasible: Feasible, counts: np.
 
 @one_thread
 def equal_even_spread(
-    model: LinearModel,
+    goal: Goal,
     feasible: Feasible,
     points: np.ndarray,
     site: np.ndarray,
     value: float,
+    size: int,
     cache: dict[int, float],
 ) -> tuple[int | None, int]:
-    """(n, largest): a count at which an even spread reaches `value` [bits] and one less does not; None if none does.
+    """(n, largest): a count at which an even spread reaches the score `value` and one less does not; None if none does.
 
     Found by bisection: it is the smallest such count where the value rises with the count, as it nearly always does.
-    For a stock of one entry; `largest` is the number of its sites. cache: values of spreads already computed.
+    For a stock of one entry and layouts of `size` sensors; `largest` is the number of its sites. cache: values of
+    spreads already computed.
     """
     largest = len(np.unique(site))
 
     def spread_value(count: int) -> float:
         if count not in cache:
-            cache[count] = information(model, evenly(points, site, feasible, np.array([count])))
+            cache[count] = goal.score(evenly(points, site, feasible, np.array([count])))
         return cache[count]
 
-    low, high = feasible.size - 1, largest
+    low, high = size - 1, largest
     if spread_value(largest) < value:
         return None, largest
     while high - low > 1:
@@ -86,16 +87,18 @@ def standard_subset(
     points: np.ndarray,
     site: np.ndarray,
     feasible: Feasible,
+    counts: np.ndarray,
     families: tuple[tuple[str, np.ndarray], ...],
 ) -> tuple[np.ndarray | None, str]:
     """Candidates at standard positions: the 10-20 ones first, thinned evenly, then 10-10, then 10-5.
 
-    families: (name, positions (n, 3) [m]) from coarse to fine. Positions without an allowed site within 12 mm are
-    left out. Returns (candidates or None when there are too few, a note).
+    counts (n_entries,): sensors of each stock entry. families: (name, positions (n, 3) [m]) from coarse to fine.
+    Positions without an allowed site within 12 mm are left out. Returns (candidates or None when there are too few, a
+    note).
     """
     picked = []
     finest = families[0][0]
-    for entry, count in enumerate(feasible.counts):
+    for entry, count in enumerate(counts):
         sites, candidates = first_at_site(site, feasible.group, entry)
         chosen = np.flatnonzero(np.isin(candidates, feasible.keep))
         tree = cKDTree(points[sites])
@@ -114,17 +117,16 @@ def standard_subset(
     return np.concatenate(picked), f"{finest} positions"
 
 
-def best_singles(model: LinearModel, feasible: Feasible) -> np.ndarray:
+def best_singles(alone: np.ndarray, feasible: Feasible, counts: np.ndarray) -> np.ndarray:
     """The candidates that carry most on their own, taken from the top as far as the rules allow.
 
-    A single electrode against an unknown reference carries nothing, so singles are ranked as if the reference were
-    known.
+    alone (n_candidates,): score of each on its own, as if the reference were known: against an unknown one a single
+    electrode carries nothing. counts (n_entries,): sensors of each stock entry.
     """
-    known = replace(model, offset=np.zeros_like(model.offset))
-    alone = np.array([information(known, np.array([candidate])) for candidate in range(model.n_candidates)])
     chosen = np.array(sorted(feasible.keep), dtype=int)
-    while len(chosen) < feasible.size:
-        allowed = feasible.addable(chosen)
+    while len(chosen) < counts.sum():
+        held = np.bincount(feasible.group[chosen], minlength=len(counts))
+        allowed = feasible.addable(chosen) & (held < counts)[feasible.group]
         if not allowed.any():
             return feasible.any_set(alone)
         chosen = np.append(chosen, int(np.argmax(np.where(allowed, alone, -np.inf))))
@@ -133,35 +135,41 @@ def best_singles(model: LinearModel, feasible: Feasible) -> np.ndarray:
 
 @one_thread
 def yardsticks(
-    model: LinearModel,
+    goal: Goal,
     feasible: Feasible,
+    counts: np.ndarray,
+    alone: np.ndarray,
     points: np.ndarray,
     site: np.ndarray,
     families: tuple[tuple[str, np.ndarray], ...],
     seed: int,
     progress: Callable[[str], None] = lambda doing: None,
     axis_names: tuple[str, ...] = (),
+    breaks_limits: Callable[[np.ndarray], bool] = lambda chosen: False,
 ) -> tuple[Yardstick, ...]:
-    """Even spread, standard positions, best single channels, median of 200 random layouts, at the same counts.
+    """Even spread, standard positions, best single channels, median of 200 random layouts.
 
-    axis_names: of each candidate, "" for electrodes; the first two take a site's first option and say which it is.
+    counts (n_entries,): sensors of each stock entry; alone: see `best_singles`. axis_names: of each candidate, "" for
+    electrodes; the first two take a site's first option and say which it is. breaks_limits(chosen): whether errors pass
+    limits that the brief sets.
     """
     progress("baselines")
 
     def of(name: str, chosen: np.ndarray, *notes: str) -> Yardstick:
-        broken = "" if feasible.allows(chosen) else "breaks a rule of the brief, shown all the same"
-        return Yardstick(name, information(model, chosen), chosen, ", ".join(filter(None, [*notes, broken])))
+        kept = feasible.allows(chosen) and not breaks_limits(chosen)
+        broken = "" if kept else "breaks a rule of the brief, shown all the same"
+        return Yardstick(name, goal.score(chosen), chosen, ", ".join(filter(None, [*notes, broken])))
 
     def axis_used(chosen: np.ndarray) -> str:
         used = dict.fromkeys(axis_names[candidate] for candidate in chosen if axis_names and axis_names[candidate])
         return f"every magnetometer's axis {' or '.join(used)}, a site's first option" if used else ""
 
-    spread = evenly(points, site, feasible, feasible.counts)
+    spread = evenly(points, site, feasible, counts)
     even = of("even spread", spread, axis_used(spread))
-    chosen, note = standard_subset(points, site, feasible, families)
+    chosen, note = standard_subset(points, site, feasible, counts, families)
     standard = () if chosen is None else (of("standard positions", chosen, note, axis_used(chosen)),)
-    singles = of("best single channels", best_singles(model, feasible))
+    singles = of("best single channels", best_singles(alone, feasible, counts))
     rng = np.random.default_rng([seed, RANDOM_LAYOUTS])
-    draws = [information(model, random_set(feasible, rng)) for _ in range(RANDOM_LAYOUTS)]
+    draws = [goal.score(random_set(feasible, rng)) for _ in range(RANDOM_LAYOUTS)]
     random = Yardstick("random", float(np.median(draws)), None, f"median of {RANDOM_LAYOUTS}")
     return (even, *standard, singles, random)

@@ -10,7 +10,7 @@ from scipy.spatial import cKDTree
 
 from layout.anatomy.head import Head, Region
 from layout.anatomy.head_size import head_size
-from layout.brief.objects import Brief
+from layout.brief.objects import Brief, BudgetBrief, ZoneBrief
 from layout.noise.calibration import Figure
 from layout.outputs.backdrop import Backdrop, paint_backdrop
 from layout.outputs.figure import (
@@ -146,7 +146,8 @@ def _stock(check: Check) -> Table:
 
 
 def _sites_of(candidates: Candidates, entry: int) -> np.ndarray:
-    return np.unique(candidates.site[candidates.kind == entry])
+    """Rows of the sites that an entry may use, both sides of left-right pairs among them."""
+    return np.unique(candidates.singles.site[candidates.single_sensors(np.flatnonzero(candidates.kind == entry))])
 
 
 def _neighbours(points: np.ndarray) -> str:
@@ -163,6 +164,11 @@ def _rules(check: Check) -> list[str]:
     pairs = len(np.unique(np.sort(np.stack([site[first[apart]], site[second[apart]]], axis=1), axis=1), axis=0))
     spacings = ", ".join(f"{entry.spacing / MM:g} mm" for entry in check.brief.stock)
     lines = [f"Rules: one sensor per site; spacing {spacings}: {pairs} pairs of sites exclude each other."]
+    lines += [_zone_rule(zone) for zone in check.brief.places.zones if zone.at_least or zone.at_most is not None]
+    if check.brief.places.left_right_pairs:
+        lines.append("Layouts are symmetrical: a site is chosen exactly if its mirror image is.")
+    if check.brief.budget is not None:
+        lines.append(_budget_rule(check.brief.budget))
     if check.kept:
         lines.append("Kept in every layout: " + ", ".join(names[number] for number in check.kept) + ".")
     if any(entry.kind == "electrode" for entry in check.brief.stock):
@@ -170,6 +176,20 @@ def _rules(check: Check) -> list[str]:
         lines.append(f"Reference: {who}.")
     lines.append("An allowed layout exists: the counts fit among these sites under these rules.")
     return lines
+
+
+def _zone_rule(zone: ZoneBrief) -> str:
+    limits = [f"at least {zone.at_least}"] if zone.at_least else []
+    limits += [f"at most {zone.at_most}"] if zone.at_most is not None else []
+    kinds = f" of {', '.join(one_line(kind) for kind in zone.kinds)}" if zone.kinds else ""
+    return f"Zone {one_line(zone.name)}: {' and '.join(limits)} sensors{kinds}."
+
+
+def _budget_rule(budget: BudgetBrief) -> str:
+    blocks = ""
+    if budget.block_channels is not None:
+        blocks = f", {budget.block_price:g} for each started block of {budget.block_channels} channels included"
+    return f"Budget: at most {budget.total:g} in all{blocks}."
 
 
 def check_picture(check: Check) -> Picture:

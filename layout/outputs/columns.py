@@ -43,7 +43,7 @@ SENSORS = {
         "right",
         "",
     ),
-    "marginal_bits": ("What the layout loses without this sensor, all its channels together", "bits"),
+    "lost_without_{unit}": ("What the layout loses without this sensor, all its channels together", "{unit}"),
     "role": ("reference: the electrode to connect as reference; empty for all others", ""),
 }
 
@@ -51,12 +51,12 @@ RANKING = {
     "row": ("layout: a ranked layout; baseline: a choice without a search, of as many sensors", ""),
     "rank": ("Rank of the layout from 1, empty for baselines", ""),
     "name": ("Name of the layout or baseline", ""),
-    "value_bits": ("Information about the regions under the brief's model of head and noise", "bits"),
-    "bound_bits": (
+    "value_{unit}": ("{goal} under the brief's model of head and noise", "{unit}"),
+    "bound_{unit}": (
         "What no allowed layout can pass that differs enough from all earlier ranks; empty for baselines",
-        "bits",
+        "{unit}",
     ),
-    "gap_percent": ("100 (bound - value) / bound", "percent"),
+    "gap_percent": ("Distance of the value to the bound, as a share of {whole}", "percent"),
     "proven": ("yes: the gap is within the tolerance called proven; no: better layouts may exist inside the gap", ""),
     "percent_of_best": ("Value as a share of layout 1", "percent"),
     "cost": ("Sum of the prices of the sensors, in the brief's own unit", ""),
@@ -75,12 +75,28 @@ RANKING = {
 }
 
 
-def columns_json() -> str:
-    """File name -> column -> Description and, where it has one, Units."""
-    content = {"ranking.csv": RANKING, "layout-*/sensors.csv": SENSORS}
+POLISHED = {
+    "name": ("The choice of layout 1 that was slid, by name", ""),
+    **{name: SENSORS[name] for name in ("channel", "x_mm", "y_mm", "z_mm", "scalp_x_mm", "scalp_y_mm", "scalp_z_mm")},
+    **{name: SENSORS[name] for name in ("axis_x", "axis_y", "axis_z")},
+    "slid_mm": ("Straight distance from the site on the grid to the place on the scalp", "mm"),
+}
+
+GOALS = {
+    "bits": {"unit": "bits", "goal": "Information about the regions", "whole": "the bound"},
+    "mm": {"unit": "mm", "goal": "Linearised localisation error, smaller is better,", "whole": "the value"},
+}
+
+
+def columns_json(unit: str) -> str:
+    """File name -> column -> Description and, where it has one, Units, for a goal in bits or mm."""
+    words = GOALS[unit]
+    content = {"ranking.csv": RANKING, "layout-*/sensors.csv": SENSORS, "polished.csv": POLISHED}
     defined = {
         file: {
-            name: {"Description": text} | ({"Units": unit} if unit else {}) for name, (text, unit) in columns.items()
+            name.format(**words): {"Description": text.format(**words)}
+            | ({"Units": units.format(**words)} if units else {})
+            for name, (text, units) in columns.items()
         }
         for file, columns in content.items()
     }

@@ -29,6 +29,7 @@ ARROW = 11.5e-3  # m, an axis lying in the picture's plane
 HEAD_ON = 0.87  # cosine beyond which an axis has no arrow worth drawing
 BEHIND = 4e-3  # m: a site this far under the nearest scalp is on the far side
 KIND_COLOURS = ("#0B3C6F", "#1B1B1B", "#5B2A6E", "#5C3A12")
+GROUND_COLOUR = "#6B6B6B"
 STYLE = {
     "text.parse_math": False,
     "svg.hashsalt": "layout",
@@ -70,7 +71,7 @@ def rendered(figure: Figure) -> Picture:
 def scalp_figure(result: DesignResult, layout: RankedLayout, backdrops: dict[str, Backdrop] | None = None) -> Figure:
     """Four views on one figure, with title, scale bar and legend."""
     backdrops = {} if backdrops is None else backdrops
-    views = four_views(_normals(result, layout.sensors))
+    views = four_views(_normals(layout.sensors))
 
     def draw(axes: Axes, view: View) -> None:
         if view.name not in backdrops:
@@ -195,7 +196,7 @@ def draw_sensors(axes: Axes, result: DesignResult, layout: RankedLayout, view: V
     far = behind(flat, backdrop)
     for row, spot in zip(layout.sensors, flat, strict=True):
         if far[row.number - 1]:
-            colour = _kind_colour(result, row)
+            colour = _kind_colour(row)
             axes.add_patch(
                 Circle(
                     spot[:2],
@@ -211,7 +212,7 @@ def draw_sensors(axes: Axes, result: DesignResult, layout: RankedLayout, view: V
     anchors = flat[~far, :2]
     places = spread_apart(anchors, 2.15 * DISC_RADIUS)
     for row, anchor, place in zip(near, anchors, places, strict=True):
-        _draw_sensor(axes, _kind_colour(result, row), row, anchor, place, view)
+        _draw_sensor(axes, _kind_colour(row), row, anchor, place, view)
     return axes
 
 
@@ -232,7 +233,7 @@ def _draw_sensor(axes: Axes, colour: str, row: SensorRow, anchor: np.ndarray, pl
         axes.plot(*zip(anchor, place, strict=True), color=colour, linewidth=0.8, zorder=5)
         axes.plot(*anchor, marker=".", color=colour, markersize=4, zorder=5)
     is_reference = row.role == "reference"
-    if row.kind_type == "magnetometer":
+    if row.kind_type != "electrode":
         for axis in view.project(row.axes):
             if abs(axis[2]) > HEAD_ON:
                 axes.add_patch(Circle(place, 1.32 * DISC_RADIUS, fill=False, edgecolor=colour, linewidth=1.0, zorder=6))
@@ -277,13 +278,12 @@ def behind(flat: np.ndarray, backdrop: Backdrop) -> np.ndarray:
     return flat[:, 2] < backdrop.height[row, column] - BEHIND
 
 
-def _normals(result: DesignResult, sensors: tuple[SensorRow, ...]) -> np.ndarray:
-    candidates = result.candidates
-    return candidates.sites.normals[candidates.site[[row.candidate for row in sensors]]]
+def _normals(sensors: tuple[SensorRow, ...]) -> np.ndarray:
+    return np.array([row.normal for row in sensors])
 
 
-def _kind_colour(result: DesignResult, row: SensorRow) -> str:
-    return KIND_COLOURS[int(result.candidates.kind[row.candidate]) % len(KIND_COLOURS)]
+def _kind_colour(row: SensorRow) -> str:
+    return GROUND_COLOUR if row.role == "ground" else KIND_COLOURS[row.kind_number % len(KIND_COLOURS)]
 
 
 def _subtitle(result: DesignResult, layout: RankedLayout) -> str:
@@ -319,19 +319,19 @@ def _legend_entries(result: DesignResult, layout: RankedLayout) -> list[tuple[ob
     for row in layout.sensors:
         shown.setdefault(row.kind, row)
     for kind, row in shown.items():
-        colour = _kind_colour(result, row)
+        colour = _kind_colour(row)
         name = shortened(kind, 30)
         label = name if row.kind_type in name else f"{name} ({row.kind_type})"
         entries.append((mark(marker="o", color=colour, markersize=8), label))
     for row in layout.sensors:
         if row.role == "reference":
-            colour = _kind_colour(result, row)
+            colour = _kind_colour(row)
             style = {"markerfacecolor": "white", "markeredgecolor": colour, "markersize": 8}
             entries.append((mark(marker="o", **style), f"reference (number {row.number})"))
     entries.append((mark(marker="o", color="#3A4250", alpha=0.5, markersize=2.5), "candidate site"))
     ring = {"markerfacecolor": "none", "markeredgecolor": "#333333", "alpha": 0.45, "markersize": 5}
     entries.append((mark(marker="o", **ring), "sensor on the far side"))
-    if any(row.kind_type == "magnetometer" for row in layout.sensors):
+    if any(row.kind_type != "electrode" for row in layout.sensors):
         arrow = Line2D([], [], color="#333333", linewidth=1.3, marker=">", markersize=4.5)
         entries.append((arrow, "sensitive axis"))
         ring = {"markerfacecolor": "none", "markeredgecolor": "#333333", "markersize": 9}

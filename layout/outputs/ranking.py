@@ -27,6 +27,23 @@ def ranking_json(result: DesignResult) -> str:
         "bound_from": result.bound_from,
         "root_bound": result.root_bound,
         "proven_within_percent": result.proven_within,
+        "reach": None if result.reach is None else vars(result.reach),
+        "polished": None
+        if result.polished is None
+        else {
+            "value": result.polished.value,
+            "gain_percent": result.polished.gain_percent,
+            "sensors": [
+                {
+                    "name": sensor.name,
+                    "position_mm": sensor.position / MM,
+                    "scalp_position_mm": sensor.scalp_position / MM,
+                    "axes": sensor.axes if sensor.axes.any() else [],
+                    "slid_mm": sensor.slid / MM,
+                }
+                for sensor in result.polished.sensors
+            ],
+        },
         "stopped_by_clock": result.stopped_by_clock,
         "head": result.head.name,
         "sites": len(result.candidates.sites),
@@ -77,7 +94,14 @@ def _layout(layout: RankedLayout) -> dict[str, Any]:
         "cost": layout.cost,
         "moved": layout.moved,
         "housings_meet": layout.housings_meet,
-        "per_region": layout.per_region_bits,
+        "per_region": {
+            name: {
+                "bits": figure.bits,
+                "error_rms_mm": None if figure.error_rms is None else figure.error_rms / MM,
+                "error_worst_mm": None if figure.error_worst is None else figure.error_worst / MM,
+            }
+            for name, figure in layout.per_region.items()
+        },
         "equals_even_spread_of": layout.equals_even_spread_of,
         "even_spread_limit": layout.even_spread_limit,
         "chosen": layout.chosen,
@@ -103,7 +127,7 @@ def _sensor(row: SensorRow) -> dict[str, Any]:
         "offset_mm": row.nearest_offset / MM,
         "from_landmarks_mm": dict(zip(("NAS", "LPA", "RPA", "inion"), row.landmark_distance / MM, strict=True)),
         "arc_fractions": row.arc_fractions,
-        "marginal_bits": row.marginal_bits,
+        "lost_without": row.worth,
     }
 
 

@@ -23,6 +23,8 @@ from layout.outputs.words import (
     housings_sentence,
     meets_housings,
     nearest_text,
+    polished_sentence,
+    reach_sentence,
 )
 from layout.units import MM, NAM
 
@@ -63,11 +65,14 @@ def report_html(result: DesignResult, pictures: Sequence[Picture]) -> str:
             for index, region in enumerate(result.regions)
         ],
         bound_sentence=bound_sentence(result),
+        reach_sentence=reach_sentence(result),
+        polished_sentence=polished_sentence(result),
         effort_sentence=effort_sentence(result),
         housings_sentence=housings_sentence(result),
         meets_housings=meets_housings(result),
         columns=RANKED_COLUMNS + (f"; {HOUSINGS_COLUMN}" if meets_housings(result) else ""),
         figures=[(name, figure, figure_text(figure)) for name, figure in result.figures_of_noise.items()],
+        with_errors=any(one.error_rms is not None for one in result.layouts[0].per_region.values()),
         clock_sentence=CLOCK_SENTENCE if result.stopped_by_clock else "",
         cautions=CAUTIONS,
     )
@@ -79,7 +84,7 @@ def _layout(layout: RankedLayout, picture: Picture) -> dict[str, Any]:
         "even_spread": even_spread_text(layout),
         "picture": base64.b64encode(picture.png).decode("ascii"),
         "sensors": [_sensor(row) for row in layout.sensors],
-        "has_magnetometers": any(row.kind_type == "magnetometer" for row in layout.sensors),
+        "has_magnetometers": any(row.kind_type != "electrode" for row in layout.sensors),
     }
 
 

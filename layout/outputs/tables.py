@@ -34,14 +34,16 @@ SENSOR_COLUMNS = (
     "from_inion_mm",
     "sagittal_fraction",
     "coronal_fraction",
-    "marginal_bits",
+    "lost_without_{unit}",
     "role",
 )
 
 
-def sensors_csv(layout: RankedLayout) -> str:
-    """One row per channel; the channels of one sensor share its number and its marginal bits. Axes empty
-    where none. columns.json defines the columns."""
+def sensors_csv(layout: RankedLayout, unit: str) -> str:
+    """One row per channel; the channels of one sensor share its number and what is lost without it [unit].
+
+    Axes empty where none. columns.json defines the columns.
+    """
     rows = []
     for row in layout.sensors:
         for channel, axis in enumerate(row.axes, start=1):
@@ -61,11 +63,45 @@ def sensors_csv(layout: RankedLayout) -> str:
                     fixed(row.nearest_offset / MM, 2),
                     *(fixed(value / MM, 1) for value in row.landmark_distance),
                     *(fixed(value, 4) for value in row.arc_fractions),
-                    significant(row.marginal_bits, 6),
+                    significant(row.worth, 6),
                     row.role,
                 ]
             )
-    return _as_csv(SENSOR_COLUMNS, rows)
+    return _as_csv([column.format(unit=unit) for column in SENSOR_COLUMNS], rows)
+
+
+POLISHED_COLUMNS = (
+    "name",
+    "channel",
+    "x_mm",
+    "y_mm",
+    "z_mm",
+    "scalp_x_mm",
+    "scalp_y_mm",
+    "scalp_z_mm",
+    "axis_x",
+    "axis_y",
+    "axis_z",
+    "slid_mm",
+)
+
+
+def polished_csv(result: DesignResult) -> str:
+    """Layout 1 slid off the grid: one row per channel; axes empty for electrodes."""
+    rows = []
+    for sensor in result.polished.sensors:
+        for channel, axis in enumerate(sensor.axes, start=1):
+            rows.append(
+                [
+                    one_line(sensor.name),
+                    str(channel),
+                    *(fixed(value / MM, 2) for value in sensor.position),
+                    *(fixed(value / MM, 2) for value in sensor.scalp_position),
+                    *(fixed(value, 6) if axis.any() else "" for value in axis),
+                    fixed(sensor.slid / MM, 2),
+                ]
+            )
+    return _as_csv(POLISHED_COLUMNS, rows)
 
 
 def ranking_csv(result: DesignResult) -> str:

@@ -17,6 +17,8 @@ from layout.outputs.words import (
     housings_sentence,
     meets_housings,
     nearest_text,
+    polished_sentence,
+    reach_sentence,
 )
 
 if TYPE_CHECKING:
@@ -31,14 +33,23 @@ def print_result(result: DesignResult, console: Console) -> None:
     say(console, result.brief.title, style="bold")
     console.print(_ranked(result))
     say(console, RANKED_COLUMNS + (f"; {HOUSINGS_COLUMN}." if meets_housings(result) else "."))
-    for sentence in (bound_sentence(result), effort_sentence(result), housings_sentence(result)):
+    for sentence in (
+        reach_sentence(result),
+        bound_sentence(result),
+        polished_sentence(result),
+        effort_sentence(result),
+        housings_sentence(result),
+    ):
         if sentence:
             say(console, sentence)
     if result.stopped_by_clock:
         say(console, CLOCK_SENTENCE, style="yellow")
     console.print(_baselines(result))
-    console.print(_sensors(result.layouts[0]))
-    say(console, "nearest position: standard position, distance; bits lost: what layout 1 loses without this sensor")
+    console.print(_sensors(result.layouts[0], result.unit))
+    say(
+        console,
+        f"nearest position: standard position, distance; {result.unit} lost: what layout 1 loses without this sensor",
+    )
     if result.figures_of_noise:
         print_figures(result.figures_of_noise, console)
     print_notes(result.notes, console)
@@ -130,7 +141,7 @@ def print_figures(figures: dict[str, Figure], console: Console) -> None:
             say(console, f"- {figure.band}: {figure.source}")
 
 
-def _sensors(layout: RankedLayout) -> Table:
+def _sensors(layout: RankedLayout, unit: str) -> Table:
     from rich.text import Text
 
     rows = layout.sensors
@@ -143,11 +154,11 @@ def _sensors(layout: RankedLayout) -> Table:
     table.add_column("nearest position", overflow="fold", min_width=8)
     if axes:
         table.add_column("axis", overflow="fold")
-    table.add_column("bits lost", justify="right")
+    table.add_column(f"{unit} lost", justify="right")
     table.add_column("role", overflow="fold")
     for row in rows:
         cells = [one_line(row.site), *([one_line(row.kind)] if kinds else []), nearest_text(row)]
         cells += [one_line(row.axis_name)] if axes else []
-        cells += [fixed(row.marginal_bits, 3, "-"), row.role]
+        cells += [fixed(row.worth, 3, "-"), row.role]
         table.add_row(str(row.number), *(Text(cell) for cell in cells))
     return table

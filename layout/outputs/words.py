@@ -41,6 +41,38 @@ def bound_sentence(result: DesignResult) -> str:
     return f"{claim}. Better layouts may exist inside that gap (proven would mean {within} % or less)."
 
 
+def reach_sentence(result: DesignResult) -> str:
+    """How few sensors reach the target, and what is certain about fewer; "" where that was not asked."""
+    reach = result.reach
+    if reach is None:
+        return ""
+    target = f"{reach.target:g} {result.unit}"
+    most = max(reach.values)
+    if reach.found is None:
+        if reach.too_few >= most:
+            return f"No allowed layout of {most} sensors or fewer reaches {target}: certified."
+        return f"No layout that reaches {target} was found with up to {most} sensors; it is not excluded that one does."
+    if reach.found == reach.too_few + 1:
+        return f"{_number(reach.found, 'sensor')} reach {target}, and no fewer can: certified."
+    return (
+        f"{_number(reach.found, 'sensor')} reach {target}; {reach.too_few} or fewer cannot: certified; undecided "
+        f"between {reach.too_few + 1} and {reach.found}."
+    )
+
+
+def polished_sentence(result: DesignResult) -> str:
+    """What sliding the sensors of layout 1 off the grid gained; "" where that was not asked."""
+    polished = result.polished
+    if polished is None:
+        return ""
+    farthest = max(sensor.slid for sensor in polished.sensors) / MM
+    gain = fixed(polished.gain_percent, 1)
+    return (
+        f"Slid off the grid, layout 1 gives {fixed(polished.value, 3)} {result.unit}, {gain} % better (sensors slid by "
+        f"up to {fixed(farthest, 1)} mm; polished.csv); the bound covers the grid only."
+    )
+
+
 def effort_sentence(result: DesignResult) -> str:
     """How much was searched for the layouts and for the bound; "" where nothing was counted."""
     effort = result.search_effort
@@ -48,10 +80,9 @@ def effort_sentence(result: DesignResult) -> str:
         return ""
     parts = effort["parts examined"]
     proof = f"{_number(parts, 'part')} examined, {effort['parts left open']} left open" if parts else "not used"
-    return (
-        f"Search: {_number(effort['starts'], 'start')}, {_number(effort['swaps'], 'swap')}. "
-        f"Bound: {_number(effort['bound rounds'], 'round')} of tightening; branch and bound: {proof}."
-    )
+    swaps = f", {_number(effort['swaps'], 'swap')}" if "swaps" in effort else ""
+    rounds = f" {_number(effort['bound rounds'], 'round')} of tightening;" if "bound rounds" in effort else ""
+    return f"Search: {_number(effort['starts'], 'start')}{swaps}. Bound:{rounds} branch and bound: {proof}."
 
 
 def housings_sentence(result: DesignResult) -> str:

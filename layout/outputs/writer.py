@@ -27,7 +27,7 @@ from layout.outputs.figure import Picture, scalp_pictures
 from layout.outputs.ranking import ranking_json
 from layout.outputs.report import report_html
 from layout.outputs.result import DesignResult, RankedLayout
-from layout.outputs.tables import ranking_csv, sensors_csv
+from layout.outputs.tables import polished_csv, ranking_csv, sensors_csv
 
 RANKING = "ranking.json"
 AUDIT = "audit.npz"
@@ -36,13 +36,16 @@ Pictures = tuple[Picture, ...]
 TOP_FILES: dict[str, Callable[[DesignResult, Pictures], str | bytes]] = {
     RANKING: lambda result, pictures: ranking_json(result),
     "ranking.csv": lambda result, pictures: ranking_csv(result),
-    "columns.json": lambda result, pictures: columns_json(),
+    "columns.json": lambda result, pictures: columns_json(result.unit),
     "report.html": report_html,
 }
-LAYOUT_FILES: dict[str, Callable[[RankedLayout, Picture], str | bytes]] = {
-    "sensors.csv": lambda layout, picture: sensors_csv(layout),
-    "scalp.png": lambda layout, picture: picture.png,
-    "scalp.svg": lambda layout, picture: picture.svg,
+LAYOUT_FILES: dict[str, Callable[[DesignResult, RankedLayout, Picture], str | bytes]] = {
+    "sensors.csv": lambda result, layout, picture: sensors_csv(layout, result.unit),
+    "scalp.png": lambda result, layout, picture: picture.png,
+    "scalp.svg": lambda result, layout, picture: picture.svg,
+}
+POLISHED_FILES: dict[str, Callable[[DesignResult], str | bytes]] = {
+    "polished.csv": polished_csv,
 }
 ELECTRODE_FILES: dict[str, Callable[[DesignResult, RankedLayout], str | bytes]] = {
     ELECTRODES_TSV: lambda result, layout: electrodes_tsv(layout),
@@ -173,7 +176,7 @@ def _is_earlier_output(folder: Path) -> bool:
 
 def _is_our_file(path: Path) -> bool:
     if len(path.parts) == 1:
-        return path.name in TOP_FILES or path.name == AUDIT
+        return path.name in TOP_FILES or path.name in POLISHED_FILES or path.name == AUDIT
     known = path.name in LAYOUT_FILES or path.name in ELECTRODE_FILES
     return len(path.parts) == 2 and known and re.fullmatch(r"layout-\d+", path.parts[0]) is not None
 
@@ -196,13 +199,16 @@ def _fill(folder: Path, result: DesignResult, audit: bool) -> None:
     pictures = scalp_pictures(result)
     for name, export in TOP_FILES.items():
         _write(folder / name, export(result, pictures))
+    if result.polished is not None:
+        for name, export in POLISHED_FILES.items():
+            _write(folder / name, export(result))
     if audit:
         _write_audit(folder / AUDIT, result)
     for layout, picture in zip(result.layouts, pictures, strict=True):
         place = folder / f"layout-{layout.rank}"
         place.mkdir()
         for name, export in LAYOUT_FILES.items():
-            _write(place / name, export(layout, picture))
+            _write(place / name, export(result, layout, picture))
         if electrodes_of(layout):
             for name, export in ELECTRODE_FILES.items():
                 _write(place / name, export(result, layout))

@@ -9,6 +9,7 @@ from studies import BAND, SPHERE, TWO_REGIONS, coils, cups, problem_of, study_of
 from layout.anatomy.positions import FAMILIES, family_names
 from layout.engine.feasible import Feasible
 from layout.engine.information import information
+from layout.engine.information_goal import InformationGoal
 from layout.engine.model import LinearModel
 from layout.engine.ranking import rank_layouts
 from layout.engine.search import random_set
@@ -34,6 +35,26 @@ def families(study):
     )
 
 
+def alone(model):
+    """Bits of each candidate on its own, the reference known."""
+    known = replace(model, offset=np.zeros_like(model.offset))
+    return np.array([information(known, np.array([candidate])) for candidate in range(model.n_candidates)])
+
+
+def all_yardsticks(tables, seed=1, counts=None):
+    study, model = study_of(*tables), problem_of(*tables).model
+    return yardsticks(
+        InformationGoal(model),
+        study.feasible,
+        study.feasible.counts if counts is None else counts,
+        alone(model),
+        study.candidates.sites.positions,
+        study.candidates.site,
+        families(study),
+        seed,
+    )
+
+
 def arguments(tables):
     study = study_of(*tables)
     return problem_of(*tables).model, study.feasible, study.candidates.sites.positions, study.candidates.site
@@ -41,9 +62,9 @@ def arguments(tables):
 
 @pytest.mark.parametrize("tables", [EEG, MEG, BOTH])
 def test_no_yardstick_that_keeps_the_rules_beats_the_search_or_the_bound(tables):
-    model, feasible, points, site = arguments(tables)
+    model, feasible, _, site = arguments(tables)
     best = rank_layouts(model, feasible, places=site, starts=4).layouts[0]
-    found = yardsticks(model, feasible, points, site, families(study_of(*tables)), seed=1)
+    found = all_yardsticks(tables)
     assert [one.name for one in found] == ["even spread", "standard positions", "best single channels", "random"]
     for one in found:
         if one.chosen is None:
@@ -61,8 +82,8 @@ def test_no_yardstick_that_keeps_the_rules_beats_the_search_or_the_bound(tables)
 
 
 def test_random_is_the_median_of_200_draws_of_the_seed():
-    model, feasible, points, site = arguments(EEG)
-    by_seed = [yardsticks(model, feasible, points, site, families(study_of(*EEG)), seed)[-1] for seed in (3, 3, 4)]
+    model, feasible, _, _ = arguments(EEG)
+    by_seed = [all_yardsticks(EEG, seed)[-1] for seed in (3, 3, 4)]
     assert by_seed[0].value == by_seed[1].value != by_seed[2].value
     assert by_seed[0].note == "median of 200"
     rng = np.random.default_rng(99)
@@ -76,11 +97,10 @@ def test_standard_positions_take_the_10_20_first():
     names = np.array(candidates.sites.names)
     points, site = candidates.sites.positions, candidates.site
     ten_twenty = {name for name in family_names("10-20") if name in names}
-    few, note = standard_subset(points, site, feasible, families(study))
+    few, note = standard_subset(points, site, feasible, feasible.counts, families(study))
     assert set(names[site[few]]) <= ten_twenty
     assert note == "10-20 positions"
-    many = replace(feasible, counts=np.array([30]))
-    chosen, note = standard_subset(points, site, many, families(study))
+    chosen, note = standard_subset(points, site, feasible, np.array([30]), families(study))
     assert ten_twenty < set(names[site[chosen]]) <= set(family_names("10-10"))
     assert note == "10-10 positions"
     assert len(np.unique(chosen)) == 30
@@ -88,30 +108,29 @@ def test_standard_positions_take_the_10_20_first():
 
 def test_standard_positions_far_from_every_site_are_not_available():
     study = study_of(*MEG)
-    feasible = replace(study.feasible, counts=np.array([len(study.candidates.sites)]))
+    every = np.array([len(study.candidates.sites)])
     far = study.candidates.sites.positions * 2
-    chosen, note = standard_subset(far, study.candidates.site, feasible, families(study))
+    chosen, note = standard_subset(far, study.candidates.site, study.feasible, every, families(study))
     assert chosen is None
     assert "only 0 standard positions" in note
 
 
 def test_kept_sites_are_in_every_yardstick():
     tables = (*EEG, '[places]\nkeep = ["AFz", "P9h"]\n')
-    study = study_of(*tables)
-    model, feasible, points, site = arguments(tables)
-    for one in yardsticks(model, feasible, points, site, families(study), seed=1)[:-1]:
+    feasible = study_of(*tables).feasible
+    for one in all_yardsticks(tables)[:-1]:
         assert np.isin(feasible.keep, one.chosen).all(), one.name
 
 
 def test_best_singles_by_a_plain_ranking():
     """Magnetometers: take the highest single value that still may join, again and again."""
     model, feasible, _, _ = arguments(MEG)
-    alone = np.array([0.5 * np.log2(_single_ratio(model, c)) for c in range(model.n_candidates)])
+    ratios = np.array([_single_ratio(model, c) for c in range(model.n_candidates)])
     expected = []
-    for candidate in np.argsort(-alone):
+    for candidate in np.argsort(-ratios):
         if len(expected) < feasible.size and not feasible.conflicts[candidate, expected].any():
             expected.append(candidate)
-    np.testing.assert_array_equal(best_singles(model, feasible), expected)
+    np.testing.assert_array_equal(best_singles(alone(model), feasible, feasible.counts), expected)
 
 
 def _single_ratio(model, candidate):
@@ -124,29 +143,28 @@ def test_best_single_electrodes_are_not_all_worthless():
     """One electrode against an unknown reference carries nothing, yet the ranking is not arbitrary."""
     model, feasible, _, _ = arguments(EEG)
     assert abs(information(model, np.array([7]))) < 1e-12
-    chosen = best_singles(model, feasible)
-    known = replace(model, offset=np.zeros_like(model.offset))
-    alone = [information(known, np.array([c])) for c in range(model.n_candidates)]
-    np.testing.assert_array_equal(np.sort(chosen), np.sort(np.argsort(alone)[-6:]))
+    chosen = best_singles(alone(model), feasible, feasible.counts)
+    np.testing.assert_array_equal(np.sort(chosen), np.sort(np.argsort(alone(model))[-6:]))
 
 
 @pytest.mark.parametrize("tables", [FEW_SITES, MEG])
 def test_equal_even_spread_is_a_crossing_and_the_first_one_where_the_curve_rises(tables):
     model, feasible, points, site = arguments(tables)
-    largest = len(np.unique(site))
+    goal, largest = InformationGoal(model), len(np.unique(site))
     curve = {
         n: information(model, evenly(points, site, feasible, np.array([n]))) for n in range(feasible.size, largest + 1)
     }
     top = curve[largest]
     for value in np.linspace(curve[feasible.size], top, 9)[1:-1]:
-        count, tried = equal_even_spread(model, feasible, points, site, value, {})
+        count, tried = equal_even_spread(goal, feasible, points, site, value, feasible.size, {})
         assert tried == largest
         assert curve[count] >= value > curve[count - 1]
         by_scan = next(n for n, reached in curve.items() if reached >= value)
         rises = all(curve[n] < value for n in curve if n < count)
         assert (count == by_scan) == rises
-    assert equal_even_spread(model, feasible, points, site, 1.001 * top, {}) == (None, largest)
-    assert equal_even_spread(model, feasible, points, site, 0.5 * curve[feasible.size], {})[0] == feasible.size
+    assert equal_even_spread(goal, feasible, points, site, 1.001 * top, feasible.size, {}) == (None, largest)
+    low = 0.5 * curve[feasible.size]
+    assert equal_even_spread(goal, feasible, points, site, low, feasible.size, {})[0] == feasible.size
 
 
 def test_equal_even_spread_on_a_curve_that_rises():
@@ -161,7 +179,8 @@ def test_equal_even_spread_on_a_curve_that_rises():
     assert (np.diff(list(curve.values())) > 0).all()
     for value in np.linspace(curve[3], curve[n], 25):
         by_scan = next(k for k, reached in curve.items() if reached >= value)
-        assert equal_even_spread(model, feasible, points, site, value, {})[0] == by_scan
+        goal = InformationGoal(model)
+        assert equal_even_spread(goal, feasible, points, site, value, 3, {})[0] == by_scan
 
 
 def test_first_at_site_is_the_normal_axis():

@@ -11,6 +11,7 @@ from layout.anatomy.head import Head, Landmarks, Region, Sources, Surface
 from layout.brief.objects import (
     Brief,
     ElectrodeBrief,
+    GoalBrief,
     HeadBrief,
     MagnetometerBrief,
     NoiseBrief,
@@ -19,7 +20,7 @@ from layout.brief.objects import (
     SitesBrief,
 )
 from layout.noise.calibration import Figure
-from layout.outputs.result import Baseline, DesignResult, RankedLayout, SensorRow
+from layout.outputs.result import Baseline, DesignResult, RankedLayout, RegionFigure, SensorRow
 from layout.sensing.candidates import Candidates, Sites
 
 HOSTILE_TITLE = '<script>alert("title")</script> & $x_{1}$ [bold]Ω, "quoted"'
@@ -122,17 +123,19 @@ def _rows(candidates: Candidates, chosen: tuple[int, ...], stock) -> tuple[Senso
                 candidate=int(index),
                 name=candidates.names[index],
                 kind=kind.name,
+                kind_number=int(candidates.kind[index]),
                 kind_type=kind.kind,
                 site=candidates.sites.names[site],
                 position=candidates.positions[channels[0]],
                 scalp_position=candidates.sites.positions[site],
+                normal=candidates.sites.normals[site],
                 axis_name=candidates.axis_name[index],
                 axes=candidates.axes[channels],
                 nearest_name=candidates.sites.nearest_name[site],
                 nearest_offset=float(candidates.sites.nearest_offset[site]),
                 landmark_distance=candidates.sites.landmark_distance[site],
                 arc_fractions=candidates.sites.arc_fractions[site],
-                marginal_bits=0.5 / number,
+                worth=0.5 / number,
                 role="reference" if kind.kind == "electrode" and number == 2 else "",
             )
         )
@@ -157,7 +160,7 @@ def make_result(only: str | None = None) -> DesignResult:
         stock=stock,
         places=PlacesBrief(),
         noise=NoiseBrief(band=(1.0, 40.0)),
-        goal="information",
+        goal=GoalBrief(),
         search=SearchBrief(seed=7),
         sha256="ab" * 32,
         folder=Path("."),
@@ -188,7 +191,7 @@ def make_result(only: str | None = None) -> DesignResult:
                 sensors=_rows(candidates, chosen, stock),
                 moved=None if rank == 1 else 2,
                 chosen=chosen,
-                per_region_bits={region.name: value / (2 + k) for k, region in enumerate(regions)},
+                per_region={region.name: RegionFigure(value / (2 + k)) for k, region in enumerate(regions)},
                 equals_even_spread_of=31 if rank > 1 else None,
                 even_spread_limit=64,
                 housings_meet=None if only == "electrode" else 3 - rank,

@@ -17,8 +17,8 @@ def _read(text):
 
 def test_sensors_round_trip_within_rounding(result):
     for layout in result.layouts:
-        rows = _read(sensors_csv(layout))
-        assert tuple(rows[0]) == SENSOR_COLUMNS
+        rows = _read(sensors_csv(layout, result.unit))
+        assert tuple(rows[0]) == tuple(column.format(unit=result.unit) for column in SENSOR_COLUMNS)
         assert len(rows) == sum(len(row.axes) for row in layout.sensors)
         by_number = {row.number: row for row in layout.sensors}
         for written in rows:
@@ -28,7 +28,7 @@ def test_sensors_round_trip_within_rounding(result):
             np.testing.assert_allclose(place, 1000 * row.position, atol=0.005001)
             inion = float(written["from_inion_mm"])
             assert abs(inion - 1000 * row.landmark_distance[3]) <= 0.0501
-            assert abs(float(written["marginal_bits"]) - row.marginal_bits) <= 1e-6
+            assert abs(float(written[f"lost_without_{result.unit}"]) - row.worth) <= 1e-6
             axis = [written[f"axis_{name}"] for name in "xyz"]
             if row.kind_type == "electrode":
                 assert axis == ["", "", ""]
@@ -38,7 +38,7 @@ def test_sensors_round_trip_within_rounding(result):
 
 
 def test_a_reference_is_named(result):
-    roles = {row["number"]: row["role"] for row in _read(sensors_csv(result.layouts[0]))}
+    roles = {row["number"]: row["role"] for row in _read(sensors_csv(result.layouts[0], result.unit))}
     assert [number for number, role in roles.items() if role == "reference"] == ["2"]
 
 
@@ -54,8 +54,8 @@ def test_ranking_has_layouts_then_baselines(result):
 
 
 def test_columns_json_defines_every_column_and_no_other(result):
-    defined = json.loads(columns_json())
-    written = {"ranking.csv": ranking_csv(result), "layout-*/sensors.csv": sensors_csv(result.layouts[0])}
+    defined = json.loads(columns_json(result.unit))
+    written = {"ranking.csv": ranking_csv(result), "layout-*/sensors.csv": sensors_csv(result.layouts[0], result.unit)}
     assert {name: list(columns) for name, columns in defined.items()} == {
         name: text.splitlines()[0].split(",") for name, text in written.items()
     }

@@ -63,7 +63,7 @@ def test_every_sensor_of_layout_1_has_a_row_with_its_nearest_position(result):
     assert [int(row[0]) for row in rows] == [sensor.number for sensor in sensors]
     for row, sensor in zip(rows, sensors, strict=True):
         assert f"{1000 * sensor.nearest_offset:.1f} mm" in " ".join(row)
-        assert f"{sensor.marginal_bits:.3f}" in row
+        assert f"{sensor.worth:.3f}" in row
         assert ("reference" in row) == (sensor.role == "reference")
 
 

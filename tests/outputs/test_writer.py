@@ -66,7 +66,7 @@ def test_audit_only_when_asked_and_readable(result, tmp_path):
 
 @pytest.mark.parametrize("problem", [RuntimeError("boom"), KeyboardInterrupt(), OSError(28, "No space left")])
 def test_nothing_half_written(result, tmp_path, monkeypatch, problem):
-    def fail(layout, picture):
+    def fail(result, layout, picture):
         if layout.rank == 2:
             raise problem
         return "fine"
