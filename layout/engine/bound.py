@@ -10,19 +10,22 @@ import numpy as np
 
 from layout.engine.ascent import newton_ascent
 from layout.engine.feasible import Feasible
+from layout.engine.goal import Goal, Relaxed
+from layout.engine.hull_ascent import HullAscent
 from layout.engine.model import ChannelTable, LinearModel
 from layout.engine.rank_aware import PooledRankAware, RankAwareRelaxation, flat_column, rank_aware_in_source_space
-from layout.engine.relaxation import PooledRelaxation, value_and_gradient
+from layout.engine.relaxation import PooledRelaxation
 from layout.engine.remaining import Remaining
 
-Relax = Callable[[np.ndarray], PooledRelaxation | PooledRankAware]
+Relax = Callable[[np.ndarray], Relaxed]
+FLOOR = 1e-9  # bits or metres: relative tolerances of a score nearer to 0 are taken of this
 
 
 @dataclass(frozen=True)
 class Bound:
-    """weights (n_candidates,) at which the limit `value` [bits] was certified; relaxed: f there; rounds of pool growth.
+    """weights (n_candidates,) at which the limit `value` of the score was certified; relaxed: f there.
 
-    Valid whatever the convergence: `value` - `relaxed` is what a longer run could at most take off it.
+    rounds: of pool growth. Valid whatever the convergence: `value` - `relaxed` is the most a longer run could take off.
     """
 
     value: float
@@ -32,9 +35,9 @@ class Bound:
     stopped_by_clock: bool = False
 
 
-def certify(model: LinearModel, feasible: Feasible, weights: np.ndarray) -> tuple[float, float]:
-    """(limit, f(weights)) recomputed in source space: f(w) - g·w plus the best linear price of any allowed layout."""
-    value, gradient = value_and_gradient(model, weights)
+def certify(goal: Goal, feasible: Feasible, weights: np.ndarray) -> tuple[float, float]:
+    """(limit, f(weights)) from the goal's rows: f(w) - g·w plus the best linear price of any allowed layout."""
+    value, gradient = goal.tangent(weights)
     best, _ = feasible.best_linear(gradient)
     return value - float(gradient @ weights) + best, value
 
@@ -42,7 +45,7 @@ def certify(model: LinearModel, feasible: Feasible, weights: np.ndarray) -> tupl
 def certify_by_rank(
     model: LinearModel, feasible: Feasible, weights: np.ndarray, target: np.ndarray
 ) -> tuple[float, float]:
-    """The same for the rank-aware relaxation with the compressed target rows (n_channels, p), also in source space."""
+    """The same [bits] for the rank-aware relaxation with compressed target rows (n_channels, p), in source space."""
     channels = most_channels(model, feasible)
     value, gradient = rank_aware_in_source_space(model, weights, target, channels)
     best, _ = feasible.best_linear(gradient)
@@ -51,7 +54,7 @@ def certify_by_rank(
 
 @dataclass(frozen=True)
 class Tangent:
-    """limit [bits] that the tangent at `weights` puts on every allowed layout; value and gradient of f there."""
+    """limit of the score that the tangent at `weights` puts on every allowed layout; value and gradient of f there."""
 
     limit: float
     value: float
@@ -62,7 +65,7 @@ class Tangent:
 
 
 def tighten(
-    model: LinearModel,
+    goal: Goal,
     feasible: Feasible,
     layout: np.ndarray,
     *,
@@ -72,17 +75,18 @@ def tighten(
 ) -> Bound:
     """Maximise the relaxation from an allowed layout (k,) on until its own gap is under `tolerance` (relative).
 
-    The limit is certified anew at the weights reached. All candidates are priced every round, in the pool or not.
+    The limit is certified anew, from the goal's rows, at the weights reached. All candidates are priced every round,
+    in the pool or not.
     """
     start = np.zeros(feasible.n_candidates)
     start[layout] = 1.0
-    tangent = tighten_to(model, feasible, start, tolerance=tolerance, rounds=rounds, deadline=deadline)
-    limit, relaxed = certify(model, feasible, tangent.weights)
+    tangent = tighten_to(goal.relaxed, feasible, start, tolerance=tolerance, rounds=rounds, deadline=deadline)
+    limit, relaxed = certify(goal, feasible, tangent.weights)
     return Bound(limit, relaxed, tangent.weights, tangent.rounds, tangent.stopped_by_clock)
 
 
 def tighten_to(
-    model: ChannelTable,
+    relax: Relax,
     feasible: Feasible,
     start: np.ndarray,
     *,
@@ -90,15 +94,13 @@ def tighten_to(
     tolerance: float = 2e-4,
     rounds: int = 60,
     deadline: float | None = None,
-    relax: Relax | None = None,
 ) -> Tangent:
     """The best tangent found from weights `start` (n_candidates,) on.
 
-    relax: pool of candidates -> relaxation on it (default: the plain one). With a `target` the ascent also ends as soon
+    relax: pool of candidates -> relaxation on it (a goal's `relaxed`). With a `target` the ascent also ends as soon
     as the limit is below it, or f itself so far above it that no tangent can be below.
     """
-    relax = relax or (lambda pool: PooledRelaxation(model, pool))
-    ascent = (_CellAscent if feasible.cells is not None else _VertexAscent)(relax, feasible, start)
+    ascent = (_CellAscent if feasible.cells is not None else _hull)(relax, feasible, start)
     best: Tangent | None = None
     done = 0
     while True:
@@ -109,18 +111,17 @@ def tighten_to(
         late = deadline is not None and time.monotonic() > deadline
         if best is None or limit < best.limit:
             best = Tangent(limit, value, weights, gradient, done, late)
-        settled = limit - value <= tolerance * max(abs(value), 1e-12)
+        settled = limit - value <= tolerance * max(abs(value), FLOOR)
         decided = target is not None and (limit <= target or value - target > limit - value)
         if settled or decided or late or done >= rounds:
             return replace(best, rounds=done, stopped_by_clock=late and not settled)
-        ascent.grow(gradient, vertex)
+        ascent.grow(vertex, gradient)
 
 
 def most_channels(model: ChannelTable, feasible: Feasible) -> int:
     """The most channels that any allowed layout brings."""
-    widest = np.zeros(len(feasible.counts), dtype=int)
-    np.maximum.at(widest, feasible.group, (model.channels < model.n_channels).sum(axis=1))
-    return int(widest @ feasible.counts)
+    channels = (model.channels < model.n_channels).sum(axis=1).astype(float)
+    return int(np.floor(feasible.best_linear(channels)[0] + 1e-6))
 
 
 def tighten_by_rank(
@@ -146,7 +147,7 @@ def tighten_by_rank(
     def relax(pool: np.ndarray) -> PooledRankAware:
         return PooledRankAware(whole, PooledRelaxation(left, pool))
 
-    return tighten_to(left, feasible, start, target=target, tolerance=tolerance, rounds=rounds, relax=relax)
+    return tighten_to(relax, feasible, start, target=target, tolerance=tolerance, rounds=rounds)
 
 
 class _CellAscent:
@@ -211,7 +212,7 @@ class _CellAscent:
         everywhere[self.pool] = weights
         return everywhere
 
-    def grow(self, gradient: np.ndarray, vertex: np.ndarray) -> None:
+    def grow(self, vertex: np.ndarray, gradient: np.ndarray) -> None:
         entering = np.flatnonzero((vertex > 0.5) & ~np.isin(np.arange(len(vertex)), self.pool))
         level = gradient[vertex > 0.5].min()
         room = max(0, self.feasible.size - len(entering))
@@ -221,45 +222,11 @@ class _CellAscent:
         self._set_pool(np.unique(np.concatenate([live, entering, rivals])), self._everywhere(self._weights))
 
 
-class _VertexAscent:
-    """Ascent over convex combinations of layouts that the linear programme proposed (simplicial decomposition).
-
-    von Hohenbalken 1977, Mathematical Programming 13:49. Serves any linear rules, spacing among them.
-    """
-
-    def __init__(self, relax: Relax, feasible: Feasible, start: np.ndarray) -> None:
-        self.relax, self.feasible = relax, feasible
-        self._vertices = [start]
-        held = np.bincount(feasible.group, weights=start, minlength=len(feasible.counts))
-        if (held < feasible.counts - 1e-6).any():
-            pool = np.flatnonzero(start)
-            gradient = relax(pool).gradient_everywhere(start[pool])
-            self._vertices.append(feasible.best_linear(gradient)[1])
-        self._mix = np.full(len(self._vertices), 1.0 / len(self._vertices))
-
-    def advance(self, tolerance: float) -> tuple[np.ndarray, float, np.ndarray]:
-        stack = np.column_stack(self._vertices)
-        pool = np.flatnonzero(stack.any(axis=1))
-        stack = stack[pool]
-        relaxation = self.relax(pool)
-
-        def value(mix: np.ndarray) -> float:
-            return relaxation.value(stack @ mix)
-
-        def second_order(mix: np.ndarray) -> tuple[float, np.ndarray, np.ndarray]:
-            height, slope, curvature = relaxation.second_order(stack @ mix)
-            return height, stack.T @ slope, stack.T @ curvature @ stack
-
-        def settled(mix: np.ndarray, height: float, slope: np.ndarray) -> bool:
-            return slope.max() - slope @ mix <= 0.2 * tolerance * abs(height)
-
-        one = np.zeros(len(self._mix), dtype=np.int64)  # a single cell that must be full: the simplex
-        self._mix, height = newton_ascent(value, second_order, self._mix, one, one, np.ones(1), 12, settled)
-        weights = np.zeros(self.feasible.n_candidates)
-        weights[pool] = stack @ self._mix
-        return weights, height, relaxation.gradient_everywhere(weights[pool])
-
-    def grow(self, gradient: np.ndarray, vertex: np.ndarray) -> None:
-        held = self._mix > 1e-9
-        self._vertices = [v for v, live in zip(self._vertices, held, strict=True) if live] + [vertex]
-        self._mix = np.append(self._mix[held], 0.0)
+def _hull(relax: Relax, feasible: Feasible, start: np.ndarray) -> HullAscent:
+    """From weights that may not fill every group yet."""
+    points = [start]
+    held = np.bincount(feasible.group, weights=start, minlength=len(feasible.counts))
+    if (held < feasible.counts - 1e-6).any():
+        pool = np.flatnonzero(start)
+        points.append(feasible.best_linear(relax(pool).gradient_everywhere(start[pool]))[1])
+    return HullAscent(relax, points)

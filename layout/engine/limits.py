@@ -8,6 +8,7 @@ import numpy as np
 
 from layout.engine.bound import Bound, certify, certify_by_rank, most_channels, tighten, tighten_by_rank
 from layout.engine.branch import Proof, prove
+from layout.engine.branch_goal import prove_goal
 from layout.engine.feasible import Feasible
 from layout.engine.goal import Goal
 from layout.engine.information_goal import InformationGoal
@@ -59,7 +60,20 @@ class Limits:
         self, rules: Feasible, chosen: np.ndarray, score: float, limit: float, tolerance: float, parts: int
     ) -> Proof | None:
         """Branch and bound under the rules from a layout and a limit; None where the gap is closed already."""
-        return None
+        if limit <= score + tolerance * abs(score):
+            return None
+        return prove_goal(
+            self._goal,
+            rules,
+            chosen,
+            score,
+            limit,
+            self._root.weights,
+            tolerance=PROOF_MARGIN * tolerance,
+            deadline=self._deadline,
+            node_limit=parts,
+            progress=self._progress,
+        )
 
     def _ascended(self, rules: Feasible, chosen: np.ndarray) -> Bound:
         return tighten(
@@ -111,7 +125,7 @@ class InformationLimits(Limits):
         self, rules: Feasible, chosen: np.ndarray, score: float, limit: float, tolerance: float, parts: int
     ) -> Proof | None:
         """Branch and bound under the rules from a layout and a limit; None where the gap is closed already."""
-        if limit <= score * (1 + tolerance):
+        if limit <= score + tolerance * abs(score):
             return None
         return prove(
             self._goal.model,

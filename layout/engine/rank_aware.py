@@ -22,8 +22,8 @@ FLAT = 1e8  # variance of the offset in units of a channel's own noise; adds abo
 RESIDUAL_BITS = 1e-5  # what compressing the target may add to the limit
 
 
-def compressed(target: np.ndarray, channels: int) -> tuple[np.ndarray, float]:
-    """Target rows (n, p) in the fewest columns, and the bits that the columns left out could add to `channels`.
+def compressed(target: np.ndarray, channels: int, spare: float = RESIDUAL_BITS) -> tuple[np.ndarray, float]:
+    """Target rows (n, p) in the fewest columns, and the bits, at most `spare`, that the rest could add to `channels`.
 
     Independent noise is at least 1 per channel, so what is left out adds at most the sum of the largest squared
     residual row norms, over 2 ln 2.
@@ -32,7 +32,7 @@ def compressed(target: np.ndarray, channels: int) -> tuple[np.ndarray, float]:
     rows = left * size
     beyond = np.cumsum(rows[:, ::-1] ** 2, axis=1)[:, ::-1]  # squared norm of columns l and later
     most = np.sort(beyond, axis=0)[::-1][:channels].sum(axis=0) * BITS
-    keep = int(np.searchsorted(-most, -RESIDUAL_BITS))
+    keep = int(np.searchsorted(-most, -spare))
     return rows[:, :keep], float(most[keep]) if keep < len(most) else 0.0
 
 

@@ -136,7 +136,7 @@ class _Search:
     def _settle(self, start: np.ndarray | None, *, per_cost: bool = False) -> None:
         """Fill a start greedily, exchange, and pool what comes out."""
         layout = greedy(guide_of(self._goal), self._feasible, start, per_cost=per_cost)
-        found, score, swaps = exchange(self._goal, self._feasible, layout)
+        found, score, swaps = exchange(self._goal, self._feasible, layout, self._late)
         self._pool.append((score, found))
         self._swaps += swaps
 

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
+
 import numpy as np
 
 from layout.engine.feasible import Feasible
@@ -79,17 +81,20 @@ def random_set(feasible: Feasible, rng: np.random.Generator, start: np.ndarray |
     return chosen if feasible.allows(chosen) else feasible.any_set(rng.random(feasible.n_candidates))
 
 
-def exchange(goal: Goal, feasible: Feasible, chosen: np.ndarray) -> tuple[np.ndarray, float, int]:
+def exchange(
+    goal: Goal, feasible: Feasible, chosen: np.ndarray, late: Callable[[], bool] = lambda: False
+) -> tuple[np.ndarray, float, int]:
     """Swap the best pair (one out, one in) until no swap gains (Fedorov 1972, Theory of Optimal Experiments).
 
     Returns the set, its score and the number of changes. Every pass prices all k (n - k) swaps at once. Where the
-    number of sensors is free, sensors are also added, and each is tried without, its place and money spent anew.
+    number of sensors is free, sensors are also added, and each is tried without, its place and money spent anew. Ends
+    before its time once `late` says so.
     """
     chosen = np.array(chosen, dtype=int)
     state, changes = goal.priced(chosen), 0
     while True:
-        better = _swapped(goal, feasible, state)
-        if better is None and (feasible.budget is not None or (feasible.least < feasible.counts).any()):
+        better = None if late() else _swapped(goal, feasible, state)
+        if better is None and not late() and (feasible.budget is not None or (feasible.least < feasible.counts).any()):
             better = _respent(goal, feasible, state)
         if better is None:
             return np.sort(state.chosen), state.value, changes

@@ -10,6 +10,7 @@ from hypothesis import strategies as st
 
 from layout.engine.bound import certify_by_rank, most_channels, tighten, tighten_by_rank
 from layout.engine.feasible import Feasible
+from layout.engine.information_goal import InformationGoal
 from layout.engine.model import LinearModel
 from layout.engine.rank_aware import (
     FLAT,
@@ -297,7 +298,7 @@ def test_it_halves_the_gap_of_few_magnetometers_among_many():
     feasible = Feasible(np.zeros(60, dtype=int), np.array([4]))
     best = _best_of_all(model, 4)
     start = np.arange(4)
-    plain = tighten(model, feasible, start)
+    plain = tighten(InformationGoal(model), feasible, start)
     rows, residual = compressed(model.target, 4)
     assert rows.shape[1] > 15
     left = remaining(model, start[:0], np.arange(60), rows)
