@@ -8,6 +8,7 @@ import numpy as np
 from scipy.spatial.transform import Rotation
 
 from layout.anatomy.head import Head
+from layout.physics.boundary_cortex import BoundaryCortex
 from layout.physics.lead_field import (
     LeadField,
     PlacedPoints,
@@ -17,9 +18,11 @@ from layout.physics.lead_field import (
     place_channels,
     place_pickup,
 )
-from layout.physics.sphere_model import Displacements, MappedCortex, SphereModel
+from layout.physics.sphere_model import Displacements, MappedCortex, SphereModel, map_sources
 from layout.sensing.candidates import Candidates
 from layout.sensing.pickup import Pickup, point_pickup
+
+HeadModel = MappedCortex | BoundaryCortex  # a head's cortex in the physical model that reads it
 
 
 @dataclass(frozen=True)
@@ -73,8 +76,12 @@ class Channels:
             return placed
         return place_pickup(sphere, head, self.positions, self.normals, placed, self.pickup)
 
-    def lead_field(self, cortex: MappedCortex, sources: np.ndarray, free: bool) -> LeadField:
+    def lead_field(self, cortex: HeadModel, sources: np.ndarray, free: bool) -> LeadField:
         """Lead field to the numbered sources of the cortex, along their normals or free."""
+        if isinstance(cortex, BoundaryCortex):
+            points = self.points
+            gain = cortex.gain(points.positions, points.axes, points.is_electrode, sources, free)
+            return LeadField(self.combine(gain), self.displacements(cortex))
         return compute_lead_field(
             cortex.sphere,
             cortex.head,
@@ -86,8 +93,27 @@ class Channels:
             self.pickup,
         )
 
-    def displacements(self, cortex: MappedCortex) -> Displacements:
-        """How far the quick model moves these channels and the whole cortex."""
+    def lead_field_at(self, cortex: HeadModel, positions: np.ndarray, normals: np.ndarray | None) -> np.ndarray:
+        """Gain (n, m) along normals (m, 3), or (n, m, 3) of free moments, to sources (m, 3) [m] in the brain."""
+        if isinstance(cortex, BoundaryCortex):
+            points = self.points
+            return self.combine(cortex.gain_at(points.positions, points.axes, points.is_electrode, positions, normals))
+        sources = map_sources(cortex.sphere, cortex.head, positions, normals)
+        return compute_lead_field(
+            cortex.sphere,
+            cortex.head,
+            self.positions,
+            self.axes,
+            self.is_electrode,
+            self.normals,
+            sources,
+            self.pickup,
+        ).gain
+
+    def displacements(self, cortex: HeadModel) -> Displacements:
+        """How far the model moves these channels and the whole cortex."""
+        if isinstance(cortex, BoundaryCortex):
+            return cortex.displacements(self.positions, self.is_electrode)
         return moved_onto_spheres(
             cortex.sphere,
             cortex.head,
@@ -98,9 +124,14 @@ class Channels:
             cortex.sources,
         )
 
-    def eye_gain(self, sphere: SphereModel, head: Head) -> np.ndarray:
+    def eye_gain(self, cortex: HeadModel) -> np.ndarray:
         """Gain (n, 2, 3) [V or T per A·m] to a free dipole at each eye."""
-        return eye_field(sphere, head, self.positions, self.axes, self.is_electrode, self.normals, self.pickup)
+        if isinstance(cortex, BoundaryCortex):
+            points = self.points
+            return self.combine(cortex.boundary.eye_gain(points.positions, points.axes, points.is_electrode))
+        return eye_field(
+            cortex.sphere, cortex.head, self.positions, self.axes, self.is_electrode, self.normals, self.pickup
+        )
 
 
 def candidate_channels(candidates: Candidates) -> Channels:

@@ -130,6 +130,13 @@ def read_lead_field(path: Path) -> LeadFieldArrays:
     return LeadFieldArrays(**{field.name: found[field.name] for field in fields(LeadFieldArrays)})
 
 
+def check_lead_field_file(path: Path) -> None:
+    """Raises FileError where the name's ending is no kind of lead field, or a folder has that name."""
+    _format(path)
+    if path.is_dir():
+        raise FileError(f"{path}: a lead field must be a file, but a folder of this name was given")
+
+
 def _format(path: Path) -> tuple[Callable, Callable]:
     known = FORMATS.get(path.suffix.lower())
     if known is None:

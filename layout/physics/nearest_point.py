@@ -15,12 +15,15 @@ CLUSTER = 32  # neighbouring faces that are passed over together
 
 class NearestPoints(NamedTuple):
     """points (n, 3) [m] on the surface; inside_depth (n,) [m]: distance, positive inside, negative outside;
-    normals (n, 3): outward unit vertex normals interpolated there.
+    normals (n, 3): outward unit vertex normals interpolated there; faces (n,): the face it lies on; shares (n, 3): its
+    barycentric coordinates there.
     """
 
     points: np.ndarray
     inside_depth: np.ndarray
     normals: np.ndarray
+    faces: np.ndarray
+    shares: np.ndarray
 
 
 def nearest_on_surface(surface: Surface, points: np.ndarray) -> NearestPoints:
@@ -44,7 +47,7 @@ def nearest_on_surface(surface: Surface, points: np.ndarray) -> NearestPoints:
     normals /= np.linalg.norm(normals, axis=1, keepdims=True)
     offset = nearest - points
     depth = np.copysign(np.linalg.norm(offset, axis=1), np.einsum("ni,ni->n", offset, normals))
-    return NearestPoints(nearest, depth, normals)
+    return NearestPoints(nearest, depth, normals, tree.indices[face], shares)
 
 
 def _clusters(centres: np.ndarray, reach: np.ndarray) -> tuple[np.ndarray, np.ndarray]:

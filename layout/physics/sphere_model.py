@@ -83,6 +83,11 @@ class MappedCortex:
     head: Head
     sources: MappedSources
 
+    @property
+    def conductivities(self) -> np.ndarray:
+        """Of the spheres, brain first [S/m]."""
+        return self.sphere.conductivities
+
     def with_conductivities(self, conductivities: np.ndarray) -> MappedCortex:
         """The same spheres and places with other conductivities [S/m], as many as before."""
         return replace(self, sphere=replace(self.sphere, conductivities=np.asarray(conductivities, float)))
@@ -111,11 +116,11 @@ class Displacements:
             )
             if largest > 0
         ]
-        moved = f"to fit the spheres, positions move by (rms): {', '.join(parts)}" if parts else "no position moves"
+        moved = f"to fit the model, positions move by (rms): {', '.join(parts)}" if parts else "no position moves"
         if not self.sources_clipped:
             return moved
         held = "source is" if self.sources_clipped == 1 else "sources are"
-        return f"{moved}; {self.sources_clipped} {held} held inside the brain's sphere"
+        return f"{moved}; {self.sources_clipped} {held} held inside the model's brain"
 
 
 def fit_sphere_model(head: Head, conductivities: np.ndarray) -> SphereModel:

@@ -37,7 +37,7 @@ def test_lead_field_on_a_sphere_is_that_of_the_spheres(study, free):
         (
             electrode,
             electric_lead_field(
-                channels.positions[electrode], sources, study.sphere.radii, study.sphere.conductivities
+                channels.positions[electrode], sources, study.cortex.sphere.radii, study.cortex.sphere.conductivities
             ),
         ),
         (~electrode, magnetic_lead_field(channels.positions[~electrode], channels.axes[~electrode], sources)),

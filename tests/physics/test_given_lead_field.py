@@ -66,7 +66,7 @@ def test_our_own_field_given_back_changes_nothing(study, arrays):
     np.testing.assert_array_equal(fixed.lead_field(study.cortex, some, False).gain, along[:, some])
     with pytest.raises(FileError, match=r"n_sources, 3\) where a region is free"):
         fixed.lead_field(study.cortex, some, True)
-    np.testing.assert_array_equal(given.eye_gain(study.sphere, study.head), computed.eye_gain(study.sphere, study.head))
+    np.testing.assert_array_equal(given.eye_gain(study.cortex), computed.eye_gain(study.cortex))
     assert given.displacements(study.cortex).sources_max == 0
 
 
@@ -102,7 +102,7 @@ def test_a_given_field_is_neither_moved_nor_differentiated(study, arrays):
     with pytest.raises(FileError, match="where sensors are moved"):
         given.moved(given.positions, 0 * given.positions, given.normals)
     with pytest.raises(FileError, match="where localisation errors are wanted"):
-        given.on_spheres(study.sphere, study.head)
+        given.on_spheres(study.cortex.sphere, study.head)
 
 
 def test_a_brief_names_the_file(tmp_path, study, arrays):

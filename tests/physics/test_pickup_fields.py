@@ -12,7 +12,8 @@ from layout.brief.objects_stock import ElectrodeBrief, GradiometerBrief, Magneto
 from layout.noise.surroundings import surroundings_columns
 from layout.physics import lead_field
 from layout.physics.channels import Channels, electrodes_at, joined, normal_magnetometers_above
-from layout.physics.derivatives import central_differences, lead_field_derivatives
+from layout.physics.derivatives import lead_field_derivatives
+from layout.physics.differences import central_differences
 from layout.physics.layered_sphere import electric_lead_field
 from layout.physics.sarvas import magnetic_lead_field
 from layout.physics.sphere_model import fit_sphere_model, map_cortex, map_sources
@@ -79,9 +80,8 @@ def test_gradiometer_is_the_difference_of_its_magnetometers(sphere_head, shape, 
     found = pair.lead_field(cortex, SOME, free).gain
     np.testing.assert_allclose(found, apart[0] - apart[1], rtol=0, atol=1e-12 * np.abs(apart[0]).max())
     # and the eyes' field alike
-    sphere = cortex.sphere
-    eyes = [points_as_magnetometers(pair, at).eye_gain(sphere, sphere_head) for at in (plus, minus)]
-    found = pair.eye_gain(sphere, sphere_head)
+    eyes = [points_as_magnetometers(pair, at).eye_gain(cortex) for at in (plus, minus)]
+    found = pair.eye_gain(cortex)
     np.testing.assert_allclose(found, eyes[0] - eyes[1], rtol=0, atol=1e-12 * np.abs(eyes[0]).max())
 
 
