@@ -221,5 +221,5 @@ def test_polish_gains_and_is_what_the_lead_fields_say():
     field = channels.lead_field(study.cortex, study.regions[0].members, free=True).gain
     assert np.isfinite(field).all()
     assert all(sensor.slid <= 60e-3 for sensor in polished.sensors)
-    radius = study.sphere.outer_radius
-    np.testing.assert_allclose(np.linalg.norm(where - study.sphere.centre, axis=1), radius, rtol=1e-3)
+    radius = study.cortex.sphere.outer_radius
+    np.testing.assert_allclose(np.linalg.norm(where - study.cortex.sphere.centre, axis=1), radius, rtol=1e-3)

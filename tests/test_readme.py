@@ -22,6 +22,14 @@ def test_the_test_command_is_the_one_that_continuous_integration_runs():
     assert command in (ROOT / ".ci" / "run").read_text().splitlines()
 
 
+def test_the_engine_example_prints_what_it_says(capsys):
+    (code,) = re.findall(r"^```python\n(.*?)^```", TEXT, re.MULTILINE | re.DOTALL)
+    assert len(code.splitlines()) <= 12
+    exec(compile(code, "README.md", "exec"), {})
+    printed = capsys.readouterr().out.strip()
+    assert code.splitlines()[-1] == f"# {printed}"
+
+
 def test_every_file_it_points_to_is_there():
     links = re.findall(r"\]\(([^)#:]+)\)", TEXT)
     assert links

@@ -16,6 +16,7 @@ from layout.brief.schema_gradiometer import GradiometerForm
 from layout.brief.schema_head import HeadForm
 from layout.brief.schema_noise import NoiseForm
 from layout.brief.schema_places import PlacesForm, ZoneForm
+from layout.brief.schema_recording import RecordingForm
 from layout.brief.schema_regions import REGION_FILES, RegionForm
 from layout.brief.schema_stock import ElectrodeForm, MagnetometerForm
 from layout.units import DEGREE, MM
@@ -29,7 +30,7 @@ def build_brief(form: BriefForm, sha256: str, folder: Path) -> objects.Brief:
         regions=tuple(_region(region, folder) for region in form.regions),
         stock=tuple(_stock(entry, folder) for entry in form.stock),
         places=_places(form.places),
-        noise=_noise(form.noise),
+        noise=_noise(form.noise, folder),
         goal=objects.GoalBrief(**_said(form.goal)),
         search=objects.SearchBrief(**_said(form.search)),
         sha256=sha256,
@@ -76,8 +77,16 @@ def _head(form: HeadForm, folder: Path) -> objects.HeadBrief:
     own = {"surfaces": own_surfaces(form, folder)} if form.kind == "surfaces" else {}
     if form.lead_field_file is not UNSET:
         own["lead_field_file"] = folder / form.lead_field_file
+    if form.nodes is not UNSET:
+        own["nodes"] = form.nodes
     return objects.HeadBrief(
-        kind=form.kind, conductivities=conductivities, size=head_size_brief(form), **mesh, **sphere, **own
+        kind=form.kind,
+        conductivities=conductivities,
+        size=head_size_brief(form),
+        model=form.chosen_model,
+        **mesh,
+        **sphere,
+        **own,
     )
 
 
@@ -145,6 +154,14 @@ def _existing(form: ExistingForm, folder: Path) -> objects.ExistingBrief:
     return objects.ExistingBrief(**said)
 
 
-def _noise(form: NoiseForm) -> objects.NoiseBrief:
+def _noise(form: NoiseForm, folder: Path) -> objects.NoiseBrief:
     parts = (form, form.background, form.eyes, form.surroundings)
-    return objects.NoiseBrief(**{field: value for part in parts for field, value in _said(part).items()})
+    said = {field: value for part in parts for field, value in _said(part).items()}
+    recording = None if form.recording is UNSET else _recording(form.recording, folder)
+    return objects.NoiseBrief(**said, recording=recording)
+
+
+def _recording(form: RecordingForm, folder: Path) -> objects.RecordingBrief:
+    said = _said(form)
+    files = {key: folder / said[key] for key in ("file", "electrodes_tsv") if key in said}
+    return objects.RecordingBrief(**(said | files))

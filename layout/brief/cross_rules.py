@@ -160,6 +160,8 @@ def _check_scenarios(form: BriefForm) -> None:
         if values == tuple(own):
             rule = "must differ from the head's own conductivities (they are always the first scenario)"
             raise broken_rule(rule, "scenarios", "conductivities_s_per_m", i)
+    if form.scenarios.heads is not UNSET and form.head.kind != "template":
+        raise broken_rule('must be left out unless head.kind is "template"', "scenarios", "heads")
     magnetometers = len(_electrode_entries(form)) < len(form.stock)
     if form.scenarios.pose_error_degrees is not UNSET and not magnetometers:
         rule = "must be left out where the stock has no magnetometers (electrodes have no axis)"
@@ -214,7 +216,7 @@ def _check_given_lead_field(form: BriefForm) -> None:
     if form.head.lead_field_file is UNSET:
         return
     why = "where head.lead_field_file gives the lead field (it holds for one model and one place of each sensor)"
-    for key in ("conductivities_s_per_m", "pose_error_mm", "pose_error_degrees"):
+    for key in ("conductivities_s_per_m", "heads", "pose_error_mm", "pose_error_degrees"):
         if getattr(form.scenarios, key, UNSET) is not UNSET:
             raise broken_rule(f"must be left out {why}", "scenarios", key)
     if form.search.polish:
@@ -226,6 +228,8 @@ def _check_given_lead_field(form: BriefForm) -> None:
 
 
 def _check_polish(form: BriefForm) -> None:
+    if form.search.polish and form.places.left_right_pairs:
+        raise broken_rule("must be false where places.left_right_pairs is true", "search", "polish")
     if form.search.polish and all(entry.sites.slots_csv is not UNSET for entry in form.stock):
         rule = "must be false where all sensors sit in helmet slots (they cannot slide along the scalp)"
         raise broken_rule(rule, "search", "polish")

@@ -9,6 +9,7 @@ from typing import Literal
 from layout.brief.objects_goal import BudgetBrief, GoalBrief, ScenariosBrief, SearchBrief
 from layout.brief.objects_head import HeadSizeBrief, SurfacesBrief
 from layout.brief.objects_places import BUILT_IN_ZONES, ExistingBrief, PlacesBrief, ZoneBrief
+from layout.brief.objects_recording import RecordingBrief
 from layout.brief.objects_stock import (
     Axes,
     ElectrodeBrief,
@@ -35,9 +36,11 @@ __all__ = [
     "HeadBrief",
     "HeadSizeBrief",
     "MagnetometerBrief",
+    "Model",
     "NoiseBrief",
     "Orientation",
     "PlacesBrief",
+    "RecordingBrief",
     "RegionBrief",
     "ScenariosBrief",
     "SearchBrief",
@@ -51,13 +54,18 @@ __all__ = [
 
 SourceMesh = Literal["coarse", "standard", "fine"]
 Frame = Literal["mni152", "head", "files"]  # files: the frame of the head's own surface files
+Model = Literal["boundary_elements", "spheres"]
 Side = Literal["left", "right", "both"]
 Orientation = Literal["normal", "free"]
 
 
 @dataclass(frozen=True)
 class HeadBrief:
-    """What head to build. Conductivities [S/m] and radii [m] run from the brain outwards (3 or 4 layers)."""
+    """What head to build. Conductivities [S/m] and radii [m] run from the brain outwards (3 or 4 layers).
+
+    model: what computes lead fields; boundary elements have three layers, a sphere head is its own model. nodes: of
+    each surface of the boundary elements, roughly.
+    """
 
     kind: Literal["template", "sphere", "surfaces"]
     conductivities: tuple[float, ...]
@@ -66,6 +74,8 @@ class HeadBrief:
     cortex_depth: float | None = None  # sphere only: depth of the source shell under the innermost radius [m]
     surfaces: SurfacesBrief | None = None  # surfaces only
     size: HeadSizeBrief | None = None  # template only: None leaves it as it is
+    model: Model = "spheres"
+    nodes: int = 1000
     lead_field_file: Path | None = None  # absolute; instead of computing the candidates' lead field
 
 
@@ -101,17 +111,19 @@ class NoiseBrief:
     """One band for everything. eeg_rms [V] is the background's rms over the calibration sites.
 
     patch_area [m²]. eyes_rms [V] is the eyes' rms at Fp1/Fp2 (0 switches them off). field_rms [T] and
-    gradient_rms [T/m] are the surroundings as magnetometers meet them.
+    gradient_rms [T/m] are the surroundings as magnetometers meet them. recording: what the
+    strengths are fitted to; what it does not tell stays as stated here.
     """
 
     band: tuple[float, float]  # [Hz]
     averages: int = 1
-    eeg_rms: float = 8e-6
+    eeg_rms: float = 7.5e-6
     patch_area: float = 20e-4
     regions_in_background: bool = False
     eyes_rms: float = 20e-6
     field_rms: float = 0.0
     gradient_rms: float = 0.0
+    recording: RecordingBrief | None = None
 
     @property
     def bandwidth(self) -> float:

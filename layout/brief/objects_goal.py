@@ -43,15 +43,17 @@ class ScenariosBrief:
     """Under what else than the brief's own head and noise a layout is judged.
 
     The brief's own case is always the first scenario; each entry of the lists is one more, changed in this alone.
-    conductivities [S/m]: one set per scenario, from the brain outwards. Factors multiply noise amplitudes: all, those
-    of the sensors themselves, those of the background. pose_error [m] and pose_tilt [rad]: standard deviations of a
-    random displacement along each of the two tangents of the scalp and of a random tilt about each of them, drawn
+    conductivities [S/m]: one set per scenario, from the brain outwards. heads: sizes of the survey, by name; the
+    template takes each in turn, caps move with the head and helmets do not. Factors multiply noise amplitudes: all,
+    those of the sensors themselves, those of the background. pose_error [m] and pose_tilt [rad]: standard deviations of
+    a random displacement along each of the two tangents of the scalp and of a random tilt about each of them, drawn
     independently for every site pose_draws times (seeded by the search's seed), each draw one scenario. any_one_lost:
     the goal is the worst over the loss of any one sensor, within every scenario.
     """
 
     judge: Judge = "mean"
     conductivities: tuple[tuple[float, ...], ...] = ()
+    heads: tuple[str, ...] = ()
     noise_factors: tuple[float, ...] = ()
     sensor_noise_factors: tuple[float, ...] = ()
     background_factors: tuple[float, ...] = ()

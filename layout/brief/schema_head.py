@@ -8,7 +8,7 @@ from typing import Annotated, Literal
 from pydantic import Field, model_validator
 
 from layout.brief.default_heads import DEFAULT_CORTEX_DEPTH, DEFAULT_RADII
-from layout.brief.objects import SourceMesh
+from layout.brief.objects import Model, SourceMesh
 from layout.brief.schema_common import UNSET, FromList, Radius, broken_rule
 from layout.brief.schema_own_head import FileName, OwnHeadForm, check_own_head
 from layout.units import MM
@@ -25,6 +25,8 @@ class HeadForm(OwnHeadForm):
     source_mesh: SourceMesh = UNSET
     radii_mm: Annotated[tuple[Radius, ...], FromList, Field(min_length=3, max_length=4)] = UNSET
     cortex_depth_mm: Annotated[float, Field(gt=0)] = UNSET
+    model: Model = UNSET
+    nodes: Annotated[int, Field(ge=300, le=5000)] = UNSET
     lead_field_file: FileName = UNSET
 
     @property
@@ -32,9 +34,21 @@ class HeadForm(OwnHeadForm):
         """Number of layers, said outright or by the length of a list; 3 when nothing says it."""
         return self.layers or len(self.conductivities_s_per_m or self.radii_mm or (0, 0, 0))
 
+    @property
+    def chosen_model(self) -> Model:
+        """What computes lead fields: boundary elements wherever they can, unless the file says otherwise."""
+        fits = self.kind != "sphere" and self.n_layers == 3
+        return self.model or ("boundary_elements" if fits else "spheres")
+
     @model_validator(mode="after")
     def _check(self) -> HeadForm:
         check_own_head(self, self.kind)
+        if self.model == "boundary_elements" and self.kind == "sphere":
+            raise broken_rule('must be "spheres" where head.kind is "sphere" (its spheres are exact)', "model")
+        if self.model == "boundary_elements" and self.n_layers != 3:
+            raise broken_rule('must be "spheres" for a head of 4 layers (boundary elements have 3)', "model")
+        if self.nodes is not UNSET and self.chosen_model != "boundary_elements":
+            raise broken_rule('must be left out unless head.model is "boundary_elements"', "nodes")
         if self.kind == "surfaces" and self.source_mesh is not UNSET:
             raise broken_rule("must be left out for own surfaces (head.cortex_sources says how many)", "source_mesh")
         for key in ("radii_mm", "cortex_depth_mm"):

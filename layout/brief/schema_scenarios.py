@@ -6,6 +6,7 @@ from typing import Annotated
 
 from pydantic import AfterValidator, Field, model_validator
 
+from layout.brief.head_sizes import NAMED_SIZES
 from layout.brief.objects_goal import Judge
 from layout.brief.schema_common import UNSET, Form, FromList, Into, broken_rule
 from layout.brief.schema_head import Conductivity
@@ -27,6 +28,18 @@ def _without_one(factors: tuple[float, ...]) -> tuple[float, ...]:
 
 
 Layers = Annotated[tuple[Conductivity, ...], FromList, Field(min_length=3, max_length=4)]
+
+
+def _known_size(name: str) -> str:
+    if name not in NAMED_SIZES:
+        raise broken_rule(f"must be a size of the survey ({', '.join(NAMED_SIZES)})")
+    return name
+
+
+SizeName = Annotated[str, AfterValidator(_known_size)]
+SizeNames = Annotated[
+    tuple[SizeName, ...], FromList, Field(min_length=1, max_length=10), AfterValidator(_without_repeats)
+]
 Factor = Annotated[float, Field(ge=1e-3, le=1000)]
 Factors = Annotated[
     tuple[Factor, ...],
@@ -48,6 +61,7 @@ class ScenariosForm(Form):
         AfterValidator(_without_repeats),
         Into("conductivities"),
     ] = UNSET
+    heads: SizeNames = UNSET
     noise_factors: Factors = UNSET
     sensor_noise_factors: Factors = UNSET
     background_factors: Factors = UNSET

@@ -32,6 +32,8 @@ _HEAD = """\
 [head]
 kind = "template"   # "template": an average adult head; "sphere": nested spheres, for quick studies
 # layers = 3   # 3: brain, skull, scalp; 4: brain, fluid, skull, scalp
+# model = "boundary_elements"   # what computes lead fields; "spheres" is quicker, coarser, and for 4 layers
+# nodes = 1000   # of each surface of the boundary elements; more are slower and more exact
 # conductivities_s_per_m = [0.33, 0.0165, 0.33]   # one per layer, from the brain outwards
 # source_mesh = "standard"   # how finely the cortex is cut: "coarse", "standard" or "fine"
 # With kind = "sphere" there are also radii_mm (80, 85, 92 if left out; from the brain outwards) and
@@ -298,12 +300,20 @@ band_hz = [1, 40]
 # averages = 1   # trials averaged: every noise power is divided by this number
 
 [noise.background]   # brain activity that is not of interest, all over the cortex
-# eeg_uv_rms = 8   # what it gives on the scalp, rms over standard positions
+# eeg_uv_rms = 7.5   # what it gives on the scalp, rms over standard positions
 # patch_cm2 = 20   # area of cortex that is active together
 # include_regions = false   # true: the regions' own cortex belongs to the background as well
 
 [noise.eyes]
 # uv_rms = 20   # what eye activity gives at Fp1 and Fp2; 0 switches it off
+
+# A table [noise.recording] takes the strengths from a recording instead, as far as it tells them:
+#   file             "rest.edf" (EDF or BDF), or a covariance: "noise.npz" with the arrays covariance, names,
+#                    unit, seconds, or "noise.npy" with channels, unit and seconds given here
+#   bad              ["T7"]: channels to leave out; largest_uv, 250: leaves out seconds with more in the band
+#   band_hz          if wider than that of the noise; electrodes_tsv for electrodes not at standard places
+#   reference        "FCz": the electrode that was the reference, if it is to count as one; may be left out
+#   sensors          entries of the stock like the recorded sensors; left out: the first of each kind
 """
 
 _QUIET = """
@@ -334,6 +344,7 @@ _SEARCH = """\
 # More cases under which a layout is judged beside the brief's own; each entry of a list is one.
 #   judge            "mean" or "worst" over all cases
 #   conductivities_s_per_m   [[0.33, 0.0042, 0.33], [0.33, 0.03, 0.33]]: one value for each layer of the head
+#   heads            ["female 5th percentile", "male 95th percentile"]: sizes of a survey for the template
 #   noise_factors, sensor_noise_factors, background_factors   [0.5, 2]: all noise, that of the sensors alone,
 #                    that of the background alone, times this
 #   pose_error_mm, pose_error_degrees   sensors placed and turned wrongly by chance, pose_draws times (8 if

@@ -31,6 +31,7 @@ def audit_arrays(objective: Objective, feasible: Feasible, ranking: Ranking) -> 
         "rank_weights": np.zeros(0) if ranking.by_rank is None else ranking.by_rank.weights,
         "bound": np.array(objective.printed(ranking.layouts[0].bound)),
         "schema": np.array(SCHEMA),
+        **_proofs(ranking),
     }
 
 
@@ -84,6 +85,17 @@ def _rules(feasible: Feasible) -> dict[str, np.ndarray]:
             "budget_block": np.array([budget.block_size or 0, budget.block_price], dtype=float),
         }
     return rules
+
+
+def _proofs(ranking: Ranking) -> dict[str, np.ndarray]:
+    """The trees of branch and bound, `proof_0_` for the first rank and so on: see engine.branch_tree.ProofTree."""
+    arrays = {}
+    for rank, layout in enumerate(ranking.layouts):
+        if layout.proof is not None:
+            for name, value in vars(layout.proof.tree).items():
+                arrays[f"proof_{rank}_{name}"] = np.asarray(value)
+            arrays[f"proof_{rank}_bound"] = np.array(layout.proof.bound)
+    return arrays
 
 
 def _rows(objective: Objective) -> dict[str, np.ndarray]:

@@ -24,7 +24,7 @@ def examine(brief: Brief, progress: Progress = silent) -> Check:
         conflicts=study.feasible.conflicts,
         kept=study.feasible.keep,
         reference=named_reference(brief, study.candidates),
-        sphere=study.sphere,
+        model=study.cortex,
         displacements=candidate_channels(study.candidates).displacements(study.cortex),
         figures_of_noise=calibration.figures(brief.noise.bandwidth, study.has_magnetometers),
     )

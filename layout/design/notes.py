@@ -7,6 +7,7 @@ from layout.brief.objects import Brief
 from layout.design.found import Found
 from layout.design.problem import Problem
 from layout.design.study import Study
+from layout.physics.boundary_cortex import BoundaryCortex
 from layout.units import MM, NAM
 
 
@@ -15,7 +16,7 @@ def notes_of(study: Study, problems: tuple[Problem, ...], found: Found) -> dict[
     notes = {
         "Sites": (*study.candidates.notes, *_axis_notes(study.brief), f"Standard positions: {F3_CONVENTION}."),
         "Head and model": study.head.notes,
-        "Strengths and noise": (*_strength_notes(study), *_sensor_notes(study.brief)),
+        "Strengths and noise": (*_strength_notes(study), *_recorded_notes(problems[0]), *_sensor_notes(study.brief)),
         "Goal": (*_goal_notes(study.brief), *_scenario_notes(problems, study.brief)),
         "Ranking": _ranking_notes(found),
     }
@@ -24,6 +25,8 @@ def notes_of(study: Study, problems: tuple[Problem, ...], found: Found) -> dict[
             f"Lead field from {study.brief.head.lead_field_file.name}; the strength of the background and the field of "
             "the eyes are set by a quick model of layered spheres.",
         )
+    elif isinstance(study.cortex, BoundaryCortex):
+        notes["Head and model"] += (f"{study.cortex.note()}; {problems[0].displacements.summary()}.",)
     elif study.head.sphere is None:
         moved = problems[0].displacements.summary()
         notes["Head and model"] += (f"Quick physical model of layered spheres; {moved}.",)
@@ -79,6 +82,11 @@ def _strength_notes(study: Study) -> tuple[str, ...]:
             "the ground is not counted."
         )
     return tuple(notes)
+
+
+def _recorded_notes(problem: Problem) -> tuple[str, ...]:
+    recorded = problem.calibration.recorded
+    return () if recorded is None else recorded.notes
 
 
 def _goal_notes(brief: Brief) -> tuple[str, ...]:

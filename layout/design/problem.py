@@ -22,6 +22,7 @@ from layout.noise.assemble import assemble_noise
 from layout.noise.calibration import Calibration, calibrate
 from layout.noise.gain_and_crosstalk import with_gain_and_crosstalk
 from layout.noise.model import NoiseModel
+from layout.noise.recording import as_recorded, with_recording
 from layout.noise.sensor import sensor_noise
 from layout.physics.sphere_model import Displacements
 
@@ -70,21 +71,22 @@ def build_problem(
 
     calibration: strengths fixed before, which hold in every scenario (default: fixed now).
     """
-    brief, head = study.brief, study.head
     scenario = scenario or own_scenario(study)
+    here, brief = scenario.study, study.brief
     progress("lead fields of the regions")
     targets, columns, start = [], {}, 0
-    for region in study.regions:
+    for region in here.regions:
         field = scenario.channels.lead_field(scenario.cortex, region.members, free=region.free_orientation)
         targets.append(region_columns(region, field.gain, region.areas))
         columns[region.name] = slice(start, start + targets[-1].shape[1])
         start += targets[-1].shape[1]
     progress("background activity")
-    labels = patches(study)
-    calibration = calibration or calibrated(study, labels)
-    background = head.cortex.areas.copy()
+    labels = patches(here)
+    calibration = calibration or calibrated(here, labels)
+    brief = as_recorded(brief, calibration)
+    background = here.head.cortex.areas.copy()
     if not brief.noise.regions_in_background:
-        for region in study.regions:
+        for region in here.regions:
             background[region.members] -= region.areas
         background = np.maximum(background, 0.0)
     noise = assemble_noise(
@@ -94,16 +96,16 @@ def build_problem(
         calibration,
         labels,
         background,
-        sensor_noise(head, brief, study.candidates, study.standard),
+        sensor_noise(here.head, brief, here.candidates, here.standard),
     )
     wanted = np.hstack(targets)
-    noise = with_gain_and_crosstalk(_scaled(noise, scenario), wanted, study.candidates, brief.stock)
+    noise = with_gain_and_crosstalk(_scaled(noise, scenario), wanted, here.candidates, brief.stock)
     target, nuisance, offset = noise.rows(wanted)
-    model = LinearModel(target, nuisance, offset, study.candidates.candidate_of_channel)
+    model = LinearModel(target, nuisance, offset, here.candidates.candidate_of_channel)
     errors = None
     if brief.goal.kind == "localisation" or brief.goal.error_limits:
         progress("lead fields beside the regions' sources")
-        errors = localisation_model(study.regions, brief.goal, scenario, model, noise.sensor_sd)
+        errors = localisation_model(here.regions, brief.goal, scenario, model, noise.sensor_sd)
     return Problem(
         scenario,
         model,
@@ -150,5 +152,6 @@ def calibrated(study: Study, labels: np.ndarray) -> Calibration:
     head = study.head
     sites = {name: study.standard[name] for name in family_names("10-20") if name in study.standard}
     normals = normals_at(head.scalp, project(head.scalp, np.array(list(sites.values()))))
-    nominal = np.array(DEFAULT_CONDUCTIVITIES[len(study.sphere.conductivities)])
-    return calibrate(study.cortex, nominal, study.brief.noise, labels, sites, normals)
+    nominal = np.array(DEFAULT_CONDUCTIVITIES[len(study.cortex.conductivities)])
+    assumed = calibrate(study.cortex, nominal, study.brief.noise, labels, sites, normals)
+    return with_recording(assumed, study.brief, head, study.cortex, labels, study.standard)

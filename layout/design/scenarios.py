@@ -6,24 +6,32 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
+from layout.anatomy.build import build_head
+from layout.anatomy.positions import standard_positions
+from layout.anatomy.regions import select_region
 from layout.anatomy.scalp_points import normals_at, project
+from layout.brief.head_sizes import NAMED_SIZES
 from layout.brief.objects import ScenariosBrief
-from layout.design.study import Study
-from layout.physics.channels import Channels, candidate_channels
+from layout.brief.objects_head import HeadSizeBrief
+from layout.design.study import Study, head_model
+from layout.physics.channels import Channels, HeadModel, candidate_channels
 from layout.physics.given_lead_field import given_channels
 from layout.physics.lead_field_files import read_lead_field
-from layout.physics.sphere_model import MappedCortex
+from layout.sensing.other_head import on_other_head
 
 POSE_DRAWS = 7  # keeps the draws of poses apart from those of the search at the same seed
 
 
 @dataclass(frozen=True)
 class Scenario:
-    """name; the channels as they sit; the cortex in its model; factors on noise amplitudes: all, sensors', brain."""
+    """name; study: the head with its regions and candidates there; the channels as they sit; the cortex in its model;
+    factors on noise amplitudes: all, sensors', brain.
+    """
 
     name: str
+    study: Study
     channels: Channels
-    cortex: MappedCortex
+    cortex: HeadModel
     noise_factor: float = 1.0
     sensor_factor: float = 1.0
     background_factor: float = 1.0
@@ -36,7 +44,7 @@ def own_scenario(study: Study) -> Scenario:
         channels = candidate_channels(study.candidates)
     else:
         channels = given_channels(study.candidates, study.cortex, read_lead_field(path), path)
-    return Scenario("as stated", channels, study.cortex)
+    return Scenario("as stated", study, channels, study.cortex)
 
 
 def scenarios(study: Study) -> tuple[Scenario, ...]:
@@ -48,6 +56,7 @@ def scenarios(study: Study) -> tuple[Scenario, ...]:
         text = ", ".join(f"{value:g}" for value in conductivities)
         cortex = study.cortex.with_conductivities(np.array(conductivities))
         found.append(replace(own, name=f"conductivities {text} S/m", cortex=cortex))
+    found += [_on_head(study, name) for name in asked.heads]
     found += [replace(own, name=f"all noise x {factor:g}", noise_factor=factor) for factor in asked.noise_factors]
     found += [
         replace(own, name=f"sensor noise x {factor:g}", sensor_factor=factor) for factor in asked.sensor_noise_factors
@@ -60,6 +69,24 @@ def scenarios(study: Study) -> tuple[Scenario, ...]:
         channels = misplaced(study, own.channels, asked.pose_error, asked.pose_tilt, rng)
         found.append(replace(own, name=f"poses drawn, {draw + 1}", channels=channels))
     return tuple(found)
+
+
+def _on_head(study: Study, name: str) -> Scenario:
+    """The template scaled to a size of the survey, with the same candidates on it."""
+    length, breadth = NAMED_SIZES[name]
+    brief = replace(study.brief.head, size=HeadSizeBrief(length=length, breadth=breadth, name=name))
+    head = build_head(brief)
+    standard = standard_positions(head.scalp, head.landmarks)
+    there = replace(
+        study,
+        brief=replace(study.brief, head=brief),
+        head=head,
+        standard=standard,
+        candidates=on_other_head(study.head, study.candidates, head, study.brief, standard),
+        regions=tuple(select_region(head, region) for region in study.brief.regions),
+        cortex=head_model(brief, head),
+    )
+    return Scenario(f"head of the {name}", there, candidate_channels(there.candidates), there.cortex)
 
 
 def misplaced(study: Study, channels: Channels, shift: float, tilt: float, rng: np.random.Generator) -> Channels:

@@ -11,13 +11,15 @@ from layout.anatomy.build import build_head
 from layout.anatomy.head import Head, Region
 from layout.anatomy.positions import standard_positions
 from layout.anatomy.regions import select_region
-from layout.brief.objects import Brief
+from layout.brief.objects import Brief, HeadBrief
 from layout.brief.objects_stock import HOUSED
 from layout.engine.clash import clashing_rules
 from layout.engine.feasible import Feasible
 from layout.engine.rules import Budget, Rule
 from layout.errors import InfeasibleError
-from layout.physics.sphere_model import MappedCortex, SphereModel, fit_sphere_model, map_cortex
+from layout.physics.boundary_cortex import BoundaryCortex
+from layout.physics.channels import HeadModel
+from layout.physics.sphere_model import fit_sphere_model, map_cortex
 from layout.sensing.candidates import Candidates
 from layout.sensing.lay_out import lay_candidates
 from layout.sensing.rules import PlacementRules, placement_rules
@@ -31,7 +33,7 @@ def silent(doing: str) -> None:
 
 @dataclass(frozen=True)
 class Study:
-    """The head of a brief with its standard positions, candidates, regions, cortex on the spheres, and the rules.
+    """The head of a brief with its standard positions, candidates, regions, cortex in its physical model, and rules.
 
     site_origin (n_sites,): for sites beside the sensors of a layout, the sensor that each comes from; sites of one
     origin share errors of pose. None: each site is its own.
@@ -42,14 +44,9 @@ class Study:
     standard: dict[str, np.ndarray]
     candidates: Candidates
     regions: tuple[Region, ...]
-    cortex: MappedCortex
+    cortex: HeadModel
     feasible: Feasible
     site_origin: np.ndarray | None = None
-
-    @property
-    def sphere(self) -> SphereModel:
-        """The quick model of the head, with the brief's conductivities."""
-        return self.cortex.sphere
 
     @property
     def has_magnetometers(self) -> bool:
@@ -66,8 +63,15 @@ def lay_out_study(brief: Brief, progress: Progress = silent) -> Study:
     standard = standard_positions(head.scalp, head.landmarks)
     candidates = lay_candidates(head, brief, standard)
     feasible = _feasible(brief, placement_rules(head, brief, candidates, standard))
-    cortex = map_cortex(fit_sphere_model(head, np.array(brief.head.conductivities)), head)
-    return Study(brief, head, standard, candidates, regions, cortex, feasible)
+    return Study(brief, head, standard, candidates, regions, head_model(brief.head, head), feasible)
+
+
+def head_model(brief: HeadBrief, head: Head) -> HeadModel:
+    """The head's cortex in the physical model that the brief names; boundary elements are solved when first read."""
+    conductivities = np.array(brief.conductivities)
+    if brief.model == "boundary_elements":
+        return BoundaryCortex(head, conductivities, brief.nodes)
+    return map_cortex(fit_sphere_model(head, conductivities), head)
 
 
 def _feasible(brief: Brief, rules: PlacementRules) -> Feasible:

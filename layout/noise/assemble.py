@@ -10,13 +10,12 @@ from layout.noise.calibration import Calibration
 from layout.noise.eyes import eye_columns
 from layout.noise.model import NoiseModel, noise_model
 from layout.noise.surroundings import surroundings_columns
-from layout.physics.channels import Channels
-from layout.physics.sphere_model import MappedCortex
+from layout.physics.channels import Channels, HeadModel
 
 
 def assemble_noise(
     channels: Channels,
-    cortex: MappedCortex,
+    cortex: HeadModel,
     noise: NoiseBrief,
     calibration: Calibration,
     labels: np.ndarray,
@@ -36,5 +35,5 @@ def assemble_noise(
         ),
     }
     if calibration.eye:
-        parts["eyes"] = eye_columns(channels.eye_gain(cortex.sphere, cortex.head), calibration.eye)
+        parts["eyes"] = eye_columns(channels.eye_gain(cortex), calibration.eye)
     return noise_model(sensor_sd, parts, channels.is_electrode, noise.averages)

@@ -3,16 +3,18 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
-from typing import Literal
+from typing import TYPE_CHECKING, Literal
 
 import numpy as np
 
 from layout.brief.objects import NoiseBrief
 from layout.noise.background import average_referenced_rms, background_columns
 from layout.noise.eyes import eye_moment
-from layout.physics.channels import electrodes_at, joined, normal_magnetometers_above
-from layout.physics.sphere_model import MappedCortex
+from layout.physics.channels import HeadModel, electrodes_at, joined, normal_magnetometers_above
 from layout.units import FT, MM, MM2, NAM, UV
+
+if TYPE_CHECKING:
+    from layout.noise.recorded_strengths import RecordedStrengths
 
 OFF_SCALP = 20 * MM  # gap of the helmets with which magnetic brain noise was measured (Zetter et al. 2018: >= 2 cm)
 ON_SCALP = 6.5 * MM
@@ -53,7 +55,8 @@ class Calibration:
 
     magnetic_off and magnetic_on [T]: rms of the background along the scalp normal 20 mm and 6.5 mm above the
     calibration sites; eeg [V]: its rms at the sites against their mean, as set on the nominal head; eeg_here [V]: the
-    same with the brief's own conductivities. All of a single epoch.
+    same with the brief's own conductivities. All of a single epoch. recorded: the fit to a recording that they are
+    from, None where the brief assumes them.
     """
 
     density: float
@@ -62,6 +65,7 @@ class Calibration:
     eeg_here: float
     magnetic_off: float
     magnetic_on: float
+    recorded: RecordedStrengths | None = None
 
     def figures(self, bandwidth: float, magnetometers: bool = True) -> dict[str, Figure]:
         """label -> figure, for the tables; without magnetometers the field off the scalp is for comparison only."""
@@ -110,11 +114,11 @@ class Calibration:
             figures["eye dipole, rms of each component"] = Figure(
                 self.eye / NAM, "nAm", remark="follows from the eye activity in the brief"
             )
-        return figures
+        return figures if self.recorded is None else self.recorded.figures(figures)
 
 
 def calibrate(
-    cortex: MappedCortex,
+    cortex: HeadModel,
     nominal: np.ndarray,
     noise: NoiseBrief,
     labels: np.ndarray,
@@ -139,8 +143,8 @@ def calibrate(
     frontal = np.isin(list(sites), FRONTAL)
     eye = 0.0
     if noise.eyes_rms > 0:
-        eye = eye_moment(electrodes.eye_gain(usual.sphere, usual.head), frontal, noise.eyes_rms)
+        eye = eye_moment(electrodes.eye_gain(usual), frontal, noise.eyes_rms)
     here = noise.eeg_rms
-    if not np.array_equal(nominal, cortex.sphere.conductivities):
+    if not np.array_equal(nominal, cortex.conductivities):
         here = density * average_referenced_rms(background_columns(electrodes, cortex, labels, whole))
     return Calibration(density, eye, noise.eeg_rms, here, *magnetic)

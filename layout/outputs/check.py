@@ -28,8 +28,10 @@ from layout.outputs.figure import (
 from layout.outputs.plain import fixed, one_line, shortened
 from layout.outputs.terminal import new_table, print_figures, print_notes, say
 from layout.outputs.views import View, four_views
+from layout.physics.boundary_cortex import BoundaryCortex
+from layout.physics.channels import HeadModel
 from layout.physics.nearest_point import nearest_on_surface
-from layout.physics.sphere_model import Displacements, SphereModel
+from layout.physics.sphere_model import Displacements
 from layout.sensing.candidates import Candidates
 from layout.units import CM2, MM
 
@@ -59,13 +61,13 @@ class Check:
     conflicts: np.ndarray
     kept: tuple[int, ...]
     reference: int | None
-    sphere: SphereModel
+    model: HeadModel
     displacements: Displacements
     figures_of_noise: dict[str, Figure]
 
 
 def print_check(check: Check, console: Console) -> None:
-    """Head, regions, stock, rules, sphere model and noise, as text that fits 80 columns."""
+    """Head, regions, stock, rules, physical model and noise, as text that fits 80 columns."""
     say(console, check.brief.title, style="bold")
     size = [f"{value / MM:.0f}" for value in head_size(check.head)]
     say(
@@ -73,7 +75,7 @@ def print_check(check: Check, console: Console) -> None:
         f"Head: {check.head.name}, length {size[0]} mm, breadth {size[1]} mm, circumference {size[2]} mm, "
         f"{len(check.head.cortex)} sources over {check.head.cortex.areas.sum() / CM2:.0f} cm² of cortex",
     )
-    say(console, _sphere_text(check))
+    say(console, _model_text(check))
     console.print(_regions(check))
     console.print(_stock(check))
     for line in _rules(check):
@@ -82,15 +84,18 @@ def print_check(check: Check, console: Console) -> None:
     print_notes({"Sites": check.candidates.notes, "Head and model": check.head.notes}, console)
 
 
-def _sphere_text(check: Check) -> str:
+def _model_text(check: Check) -> str:
+    if isinstance(check.model, BoundaryCortex):
+        return f"Physical model: {check.model.note()}; {check.displacements.summary()}"
+    sphere = check.model.sphere
     layers = ", ".join(
         f"{radius / MM:.1f} ({conductivity:g})"
-        for radius, conductivity in zip(check.sphere.radii, check.sphere.conductivities, strict=True)
+        for radius, conductivity in zip(sphere.radii, sphere.conductivities, strict=True)
     )
     text = f"Physical model: spheres of radius {layers} mm (S/m), from the brain outwards"
     if check.head.sphere is not None:
         return f"{text}; the head is that sphere"
-    centre = ", ".join(fixed(value / MM, 0) for value in check.sphere.centre)
+    centre = ", ".join(fixed(value / MM, 0) for value in sphere.centre)
     return f"{text}, centre at ({centre}) mm; {check.displacements.summary()}"
 
 

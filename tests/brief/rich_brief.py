@@ -81,7 +81,7 @@ sites = ["Fz", "Oz"]
 use = "extend"
 [search]
 proof_ranks = 2
-polish = true
+polish = false
 """.replace('name = "ears"', 'name = "behind"')
 
 

@@ -392,6 +392,12 @@ BAD = {
         "proof_ranks = 4",
         ["search.proof_ranks", "at most 3", "4"],
     ),
+    "polish of pairs": (
+        RICH_BRIEF,
+        "polish = false",
+        "polish = true",
+        ["search.polish", "left_right_pairs", "true"],
+    ),
     "polish of slots": (
         RICH_BRIEF[: RICH_BRIEF.index("[[stock]]")]
         + '[[stock]]\nkind = "magnetometer"\nname = "a"\ncount = 4\nsites = { slots_csv = "s.csv" }\n'

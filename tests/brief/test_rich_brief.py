@@ -119,7 +119,7 @@ def test_existing_layout(load_text, tmp_path):
 
 def test_search(load_text):
     search = load_text(RICH_BRIEF).search
-    assert (search.proof_ranks, search.polish) == (2, True)
+    assert (search.proof_ranks, search.polish) == (2, False)
 
 
 def test_a_brief_that_says_nothing_of_all_this(load_text):

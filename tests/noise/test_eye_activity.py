@@ -22,7 +22,7 @@ def seen_against_mean(study, strength):
     """name -> rms of the eyes' potential at the 10-20 sites [V], for a moment rms of `strength` [A·m]."""
     names = [name for name in family_names("10-20") if name in study.standard]
     channels = electrodes_at(np.array([study.standard[name] for name in names]))
-    columns = eye_columns(channels.eye_gain(study.sphere, study.head), strength)
+    columns = eye_columns(channels.eye_gain(study.cortex), strength)
     centring = np.eye(len(names)) - 1 / len(names)
     return dict(zip(names, np.sqrt(np.diag(centring @ columns @ columns.T @ centring)), strict=True))
 

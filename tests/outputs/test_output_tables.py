@@ -3,12 +3,14 @@
 import csv
 import io
 import json
+from dataclasses import replace
 
 import numpy as np
 
 from layout.outputs.columns import columns_json
 from layout.outputs.plain import one_line
-from layout.outputs.tables import SENSOR_COLUMNS, ranking_csv, sensors_csv
+from layout.outputs.result import Polished, PolishedSensor
+from layout.outputs.tables import SENSOR_COLUMNS, polished_csv, ranking_csv, sensors_csv
 
 
 def _read(text):
@@ -55,7 +57,12 @@ def test_ranking_has_layouts_then_baselines(result):
 
 def test_columns_json_defines_every_column_and_no_other(result):
     defined = json.loads(columns_json(result.unit))
-    written = {"ranking.csv": ranking_csv(result), "layout-*/sensors.csv": sensors_csv(result.layouts[0], result.unit)}
+    slid = PolishedSensor("a", np.zeros(3), np.zeros(3), np.eye(3), 0.001)
+    written = {
+        "ranking.csv": ranking_csv(result),
+        "layout-*/sensors.csv": sensors_csv(result.layouts[0], result.unit),
+        "polished.csv": polished_csv(replace(result, polished=Polished(1.0, 2.0, (slid,)))),
+    }
     assert {name: list(columns) for name, columns in defined.items()} == {
         name: text.splitlines()[0].split(",") for name, text in written.items()
     }
