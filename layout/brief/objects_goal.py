@@ -85,15 +85,15 @@ class SearchBrief:
     """Effort: seeded starts and number of ranked layouts.
 
     differ_by: sensors by which the ranks differ at least (0: chosen from the count). proof_parts: parts of the tree
-    that branch and bound may examine to narrow a layout's gap; proof_ranks: how many ranks it works on. polish: slide
-    the sensors along the scalp after the search.
+    that branch and bound may examine to narrow a layout's gap (None: as many as take some ten seconds for the goal);
+    proof_ranks: how many ranks it works on. polish: slide the sensors along the scalp after the search.
     """
 
     seed: int = 1
     starts: int = 20
     ranked: int = 3
     differ_by: int = 0
-    proof_parts: int = 100
+    proof_parts: int | None = None
     time_allowance: float | None = None  # [s]; None: no clock
     proof_ranks: int = 1
     polish: bool = False

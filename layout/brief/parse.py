@@ -102,6 +102,12 @@ def _check_files(brief: Brief, raw: dict, path: Path) -> None:
         if not _is_file(brief.folder / table[place[-1]]):
             rule = "must be a file that exists (seen from the brief)"
             raise _error(path, f"{where(place, raw)} {rule}, but {shown(table[place[-1]])} was given")
+    for key in ("file", "electrodes_tsv"):
+        one = getattr(brief.noise.recording, key, None)
+        if one is not None and not _is_file(one):
+            given = shown(raw["noise"]["recording"][key])
+            rule = "must be a file that exists (seen from the brief)"
+            raise _error(path, f"noise.recording.{key} {rule}, but {given} was given")
     layout = brief.existing.layout_tsv if brief.existing is not None else None
     if layout is not None and not _is_file(layout):
         given = shown(raw["existing"]["layout_tsv"])

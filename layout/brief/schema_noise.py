@@ -7,6 +7,7 @@ from typing import Annotated
 from pydantic import Field, model_validator
 
 from layout.brief.schema_common import UNSET, Form, FromList, Into, broken_rule
+from layout.brief.schema_recording import RecordingForm, check_band
 from layout.units import CM2, FT, FT_PER_CM, UV
 
 Frequency = Annotated[float, Field(gt=0, le=10_000)]
@@ -41,9 +42,11 @@ class NoiseForm(Form):
     background: BackgroundForm = BackgroundForm()
     eyes: EyesForm = EyesForm()
     surroundings: SurroundingsForm = SurroundingsForm()
+    recording: RecordingForm = UNSET
 
     @model_validator(mode="after")
     def _check(self) -> NoiseForm:
         if self.band_hz[1] <= self.band_hz[0]:
             raise broken_rule("must be increasing, low edge first", "band_hz")
+        check_band(self.recording, self.band_hz)
         return self

@@ -151,6 +151,13 @@ def test_files_that_are_something_else(tmp_path, name, content):
     assert sentence.isprintable()
 
 
+def test_a_matrix_with_more_behind_it_is_refused(tmp_path):
+    path = tmp_path / "long.npy"
+    path.write_bytes(npy_saying((4, 4)) + bytes(128))
+    with pytest.raises(FileError, match=r"cannot be read \(it says \(4, 4\) and holds 160 bytes\)"):
+        read(path, channels=NAMES, unit="uV", seconds=60.0)
+
+
 def test_a_cut_archive_is_refused(tmp_path):
     path = save(tmp_path / "noise.npz")
     whole = path.read_bytes()

@@ -168,6 +168,26 @@ def test_magnetometers_and_fields_from_outside(tmp_path):
     assert figures["field from outside, rms of each component"].value == pytest.approx(300, rel=1e-3)
 
 
+def test_magnetometers_alone(tmp_path):
+    """No reference, nothing about contacts: coils on the scalp normals see brain, eyes and their own noise."""
+    study = study_of(*BOTH_KINDS)
+    assumed, labels = noise_parts()[1], patches(study)
+    points = np.array([study.standard[name] for name in NAMES])
+    out = points / np.linalg.norm(points, axis=1)[:, None]
+    coils_there = Channels(points + 0.012 * out, out, np.zeros(len(NAMES), dtype=bool), out)
+    columns = 1.2 * assumed.density * background_columns(coils_there, study.cortex, labels, study.head.cortex.areas)
+    eyes = 0.5 * assumed.eye * coils_there.eye_gain(study.cortex).reshape(len(NAMES), -1)
+    covariance = columns @ columns.T + eyes @ eyes.T + (20 * FT) ** 2 * 39 * np.eye(len(NAMES))
+    places = {"positions_mm": 1e3 * coils_there.positions, "axes": out}
+    study = with_file(study, save(tmp_path / "coils.npz", covariance, unit="T", **places))
+    found = calibrated(study, labels)
+    assert found.density == pytest.approx(1.2 * assumed.density, rel=1e-3, abs=0)
+    stock = as_recorded(study.brief, found).stock
+    assert stock[1].noise_density == pytest.approx(20 * FT, rel=1e-3, abs=0)
+    assert stock[0] == study.brief.stock[0]
+    assert "says nothing of contact noise" in " ".join(found.recorded.notes)
+
+
 def test_stock_entries_like_the_recorded_sensors(exact):
     two = (
         SPHERE,
