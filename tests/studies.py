@@ -9,7 +9,7 @@ from layout.brief.parse import load_brief
 from layout.design import Problem, Study, build_problem, lay_out_study
 
 SPHERE = '[head]\nkind = "sphere"\nsource_mesh = "coarse"\n'
-TEMPLATE = '[head]\nkind = "template"\n'
+TEMPLATE = '[head]\nkind = "template"\nmodel = "spheres"\n'  # boundary elements have tests of their own
 BAND = "[noise]\nband_hz = [1, 40]\n"
 CUPS = '[[stock]]\nkind = "electrode"\nname = "cup"\ncount = {count}\nsites = {{ {sites} }}\ncontact_noise_uv = 1\n'
 COILS = (

@@ -136,6 +136,7 @@ def test_the_same_brief_gives_the_same_numbers():
     assert [one.value for one in first.baselines] == [one.value for one in second.baselines]
 
 
+@pytest.mark.slow
 def test_any_member_may_be_called_the_reference():
     """Each of the kept set named in turn: the same value, which is that of data measured against that very contact."""
     names = ("Fz", "C3", "CP4", "Oz", "T8")
@@ -206,14 +207,14 @@ def test_displacements_are_those_of_the_whole_cortex():
     tables = (TEMPLATE, HANDS, cups(4, 'family = "10-20"'), BAND)
     study, problem = study_of(*tables), problem_of(*tables)
     before = study.head.cortex.positions
-    after = map_sources(study.sphere, study.head, before, None).positions
+    after = map_sources(study.cortex.sphere, study.head, before, None).positions
     moved = np.linalg.norm(after - before, axis=1)
     assert problem.displacements.sources_max == pytest.approx(moved.max(), abs=0)
     assert problem.displacements.sources_rms == pytest.approx(np.sqrt((moved**2).mean()), abs=0)
     depth = nearest_on_surface(study.head.inner_skull, before).inside_depth
     assert (
         problem.displacements.sources_clipped
-        == (depth < study.sphere.inner_skull_radius - study.sphere.brain_radius + 0.5e-3).sum()
+        == (depth < study.cortex.sphere.inner_skull_radius - study.cortex.sphere.brain_radius + 0.5e-3).sum()
     )
 
 

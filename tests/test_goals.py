@@ -64,6 +64,7 @@ def test_weights_of_regions_treat_the_others_as_nuisance():
     assert other.layouts[0].per_region["right"].bits > result.layouts[0].per_region["right"].bits
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize("judge", ["mean", "worst"])
 def test_scenarios_are_averaged_or_the_worst_taken(judge):
     lines = f'[scenarios]\njudge = "{judge}"\nnoise_factors = [2.0]\nbackground_factors = [0.5]\n'
@@ -88,6 +89,7 @@ def test_doubling_all_noise_quarters_the_signal_to_noise():
     assert study.head.sphere is not None
 
 
+@pytest.mark.slow
 def test_the_loss_of_any_one_sensor_is_the_least_of_what_is_left():
     brief = brief_of(*FIELD, "[scenarios]\nany_one_lost = true\n")
     result = design(brief)
@@ -102,6 +104,7 @@ def test_the_loss_of_any_one_sensor_is_the_least_of_what_is_left():
     assert result.layouts[0].value >= without - 1e-9
 
 
+@pytest.mark.slow
 def test_limits_on_errors_are_kept_or_refused():
     free = design(brief_of(*FIELD, goal("error_limits_mm = { left = 51.9 }")))
     error = 1e3 * free.layouts[0].per_region["left"].error_rms

@@ -11,9 +11,21 @@ from layout.design.objective import Objective
 from layout.design.study import Progress, Study
 from layout.design.turned import all_normal, fixed_at, has_free_axes, rank_turned
 from layout.engine.free_axes import FreeRanking
+from layout.engine.information_goal import InformationGoal
 from layout.engine.ranking import Chosen, Ranking, rank_layouts
 
 Fixed = tuple[Study, Objective]
+QUICK_PARTS = 1000  # of branch and bound for the plain information: some milliseconds each
+SLOW_PARTS = 20  # for any other goal, and for free axes: some tenths of a second each
+
+
+def parts_of(study: Study, objective: Objective) -> int:
+    """How many parts of the tree branch and bound may examine: the brief's number, or as the goal's speed suggests."""
+    asked = study.brief.search.proof_parts
+    if asked is not None:
+        return asked
+    quick = isinstance(objective.goal, InformationGoal) and not has_free_axes(study.candidates)
+    return QUICK_PARTS if quick else SLOW_PARTS
 
 
 @dataclass(frozen=True)
@@ -39,7 +51,7 @@ class Found:
 def find_layouts(study: Study, objective: Objective, progress: Progress) -> Found:
     """Search, bound and prove as the brief asks."""
     if has_free_axes(study.candidates):
-        return _free(study, objective, rank_turned(study, objective, progress))
+        return _free(study, objective, rank_turned(study, objective, parts_of(study, objective), progress))
     search = study.brief.search
     ranking = rank_layouts(
         objective.goal,
@@ -49,7 +61,7 @@ def find_layouts(study: Study, objective: Objective, progress: Progress) -> Foun
         differ_by=search.differ_by or max(1, study.feasible.size // 8),
         starts=search.starts,
         seed=search.seed,
-        parts=search.proof_parts,
+        parts=parts_of(study, objective),
         proven_ranks=search.proof_ranks,
         time_allowance=search.time_allowance,
         progress=progress,

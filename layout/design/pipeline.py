@@ -10,7 +10,7 @@ from layout import __version__
 from layout.anatomy.positions import FAMILIES, family_names
 from layout.brief.objects import Brief
 from layout.design.describe import described, numbers
-from layout.design.found import Found, find_layouts
+from layout.design.found import Found, find_layouts, parts_of
 from layout.design.notes import notes_of
 from layout.design.objective import Objective, build_objective
 from layout.design.polish import polish
@@ -86,7 +86,7 @@ def _reach(study: Study, objective: Objective, progress: Progress) -> Reach:
         int(study.feasible.least[0]),
         starts=search.starts,
         seed=search.seed,
-        parts=search.proof_parts,
+        parts=parts_of(study, objective),
         progress=progress,
     )
     values, bounds = (

@@ -31,8 +31,11 @@ def free_axes_of(candidates: Candidates) -> FreeAxes:
     )
 
 
-def rank_turned(study: Study, objective: Objective, progress: Progress) -> FreeRanking:
-    """Layouts with their axes. Raises BriefError for goals whose bound over continuous axes is not offered."""
+def rank_turned(study: Study, objective: Objective, parts: int, progress: Progress) -> FreeRanking:
+    """Layouts with their axes; parts: of the tree that branch and bound may examine.
+
+    Raises BriefError for goals whose bound over continuous axes is not offered.
+    """
     brief, search = study.brief, study.brief.search
     offered = {
         "goal.kind": brief.goal.kind == "information",
@@ -59,7 +62,7 @@ def rank_turned(study: Study, objective: Objective, progress: Progress) -> FreeR
         differ_by=search.differ_by or max(1, study.feasible.size // 8),
         starts=search.starts,
         seed=search.seed,
-        parts=search.proof_parts,
+        parts=parts,
         time_allowance=search.time_allowance,
         progress=progress,
     )

@@ -238,19 +238,18 @@ def print_placement(found: Placement, console: Console) -> None:
         table.add_row(Text(one_line(one.name)), Text(instead or "none that keeps the rules"))
     console.print(table)
     table = new_table("Expected losses, with the 95 % interval of the mean")
-    table.add_column("case", min_width=16)
-    for heading in (f"{found.unit} lost", "interval", "% of value", "95 % under", "worst", "cases"):
+    table.add_column("case (cases)", min_width=16)
+    for heading in (f"{found.unit} lost", "interval", "% of value", "95 % under", "worst"):
         table.add_column(heading, justify="right", max_width=13)
     for one in found.losses:
         loss = one.loss
         table.add_row(
-            Text(_case(one)),
+            Text(f"{_case(one)} ({loss.cases})"),
             fixed(loss.mean, 3),
             "exact" if loss.exact else f"{fixed(loss.low, 3)} to {fixed(loss.high, 3)}",
             fixed(_percent(loss.mean, found.value), 1),
             fixed(loss.tail, 3),
             fixed(loss.worst, 3),
-            str(loss.cases),
         )
     console.print(table)
     for note in found.notes:

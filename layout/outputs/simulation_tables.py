@@ -18,7 +18,7 @@ if TYPE_CHECKING:
     from rich.console import Console
     from rich.table import Table
 
-STANDINGS = {"follows": "follows", "above": "ABOVE", "below": "below", "no bound": "no bound"}
+STANDINGS = {"follows": "follows", "above": "ABOVE", "below": "below", "crosses": "crosses", "no bound": "no bound"}
 
 ERRORS = {
     "layout": ("The layout asked for, or a baseline of as many sensors", ""),
@@ -43,7 +43,8 @@ ERRORS = {
     "far_percent": ("Fits more than three bounds off: under 0.3 where errors follow the bound", "percent"),
     "standing": (
         "follows: the bound, within 10 % as far as so many fits can tell; above: more noise than the bound holds for, "
-        "or fits that end elsewhere; below: the bound is larger than the brain leaves room for; no bound",
+        "or fits that end elsewhere; below: the bound is larger than the brain leaves room for; crosses: near it "
+        "only on the way from above to below; no bound",
         "",
     ),
 }

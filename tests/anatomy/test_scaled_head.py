@@ -30,6 +30,7 @@ def test_the_named_sizes_are_those_of_the_survey():
         )
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize("name", NAMED_SIZES)
 def test_named_sizes_are_met_within_a_millimetre(name):
     length, breadth = NAMED_SIZES[name]

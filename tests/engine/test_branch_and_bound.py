@@ -120,6 +120,7 @@ def _without_exchange(monkeypatch):
     monkeypatch.setattr(branch_loop, "exchange", lambda goal, feasible, chosen: (np.sort(chosen), -np.inf, 0))
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize("kind", KINDS)
 def test_the_tree_covers_every_layout_and_every_limit_holds(monkeypatch, kind, bounding):
     _without_exchange(monkeypatch)

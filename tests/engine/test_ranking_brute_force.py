@@ -28,6 +28,7 @@ def test_bounds_cover_the_exhaustive_optimum_at_every_rank(kind, seed):
     _check_every_rank(ranking, model, feasible, places, 1 + seed % 2)
 
 
+@pytest.mark.slow
 @KIND
 @pytest.mark.parametrize("seed", range(2))
 def test_branch_and_bound_narrows_the_first_rank_and_every_rank_stays_covered(kind, seed):

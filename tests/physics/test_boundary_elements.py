@@ -123,6 +123,7 @@ def test_a_radial_dipole_is_nearly_silent(coarse):
     assert np.linalg.norm(silent) < 0.02 * np.linalg.norm(heard)
 
 
+@pytest.mark.slow
 def test_anywhere_agrees_with_the_split_inside_and_with_the_closed_form_outside(coarse):
     """Without the split at the skull the same sources are a few per cent worse; a source between skull and scalp of one
     conductivity is in a homogeneous sphere.

@@ -102,6 +102,7 @@ def test_surfaces_that_touch_are_refused(ellipsoid_head):
         boundary_surfaces(dataclasses.replace(ellipsoid_head, outer_skull=close), 400)
 
 
+@pytest.mark.slow
 def test_lead_field_in_the_head_frame_against_the_series(round_head, round_model):
     """Exact spheres given as surfaces: centre off the origin, order of the channels, normals, all in place."""
     positions, axes, is_electrode = channels_on(round_head)

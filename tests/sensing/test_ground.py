@@ -22,6 +22,7 @@ def test_the_site_of_the_ground_is_taken(head, standard):
     assert any("ground at AFz: 1 places" in note for note in with_ground.notes)
 
 
+@pytest.mark.slow
 def test_spacing_and_footprint_hold_for_the_ground(head, standard):
     """The ground is an electrode of the first entry: distances by brute force."""
     stock = (
@@ -51,6 +52,7 @@ def test_a_ground_between_the_sites(head, standard):
     assert any("ground at AFz: 0 places" in note for note in laid.notes)
 
 
+@pytest.mark.slow
 def test_old_names_and_slots_of_the_stock_may_be_the_ground(head, standard):
     assert lay_candidates(head, brief(electrodes(), ground="T3"), standard).ground.names == ("T7",)
     stock = (electrodes(), magnetometers(sites=SitesBrief(grid_pitch=0.03)))

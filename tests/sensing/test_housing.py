@@ -26,6 +26,7 @@ def test_on_a_sphere_the_face_is_the_tangent_plane(sphere):
     assert np.linalg.norm(rest.faces, axis=1) == pytest.approx(RADIUS + 3e-3, abs=5e-5)
 
 
+@pytest.mark.slow
 def test_a_bump_under_the_face_pushes_the_housing_out(sphere):
     """A 4 mm bump 7 mm beside the site: under the 10 mm face it lifts it to the bump's top; a 2.5 mm face
     does not meet it.
