@@ -13,8 +13,8 @@ from layout.anatomy.scalp_points import normals_at, project
 from layout.brief.head_sizes import NAMED_SIZES
 from layout.brief.objects import ScenariosBrief
 from layout.brief.objects_head import HeadSizeBrief
-from layout.design.study import Study, head_model
-from layout.physics.channels import Channels, HeadModel, candidate_channels
+from layout.design.study import Study, cortex_model
+from layout.physics.channels import Channels, CortexModel, candidate_channels
 from layout.physics.given_lead_field import given_channels
 from layout.physics.lead_field_files import read_lead_field
 from layout.sensing.other_head import on_other_head
@@ -31,7 +31,7 @@ class Scenario:
     name: str
     study: Study
     channels: Channels
-    cortex: HeadModel
+    cortex: CortexModel
     noise_factor: float = 1.0
     sensor_factor: float = 1.0
     background_factor: float = 1.0
@@ -84,7 +84,7 @@ def _on_head(study: Study, name: str) -> Scenario:
         standard=standard,
         candidates=on_other_head(study.head, study.candidates, head, study.brief, standard),
         regions=tuple(select_region(head, region) for region in study.brief.regions),
-        cortex=head_model(brief, head),
+        cortex=cortex_model(brief, head),
     )
     return Scenario(f"head of the {name}", there, candidate_channels(there.candidates), there.cortex)
 

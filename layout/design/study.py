@@ -18,7 +18,7 @@ from layout.engine.feasible import Feasible
 from layout.engine.rules import Budget, Rule
 from layout.errors import InfeasibleError
 from layout.physics.boundary_cortex import BoundaryCortex
-from layout.physics.channels import HeadModel
+from layout.physics.channels import CortexModel
 from layout.physics.sphere_model import fit_sphere_model, map_cortex
 from layout.sensing.candidates import Candidates
 from layout.sensing.lay_out import lay_candidates
@@ -44,7 +44,7 @@ class Study:
     standard: dict[str, np.ndarray]
     candidates: Candidates
     regions: tuple[Region, ...]
-    cortex: HeadModel
+    cortex: CortexModel
     feasible: Feasible
     site_origin: np.ndarray | None = None
 
@@ -63,10 +63,10 @@ def lay_out_study(brief: Brief, progress: Progress = silent) -> Study:
     standard = standard_positions(head.scalp, head.landmarks)
     candidates = lay_candidates(head, brief, standard)
     feasible = _feasible(brief, placement_rules(head, brief, candidates, standard))
-    return Study(brief, head, standard, candidates, regions, head_model(brief.head, head), feasible)
+    return Study(brief, head, standard, candidates, regions, cortex_model(brief.head, head), feasible)
 
 
-def head_model(brief: HeadBrief, head: Head) -> HeadModel:
+def cortex_model(brief: HeadBrief, head: Head) -> CortexModel:
     """The head's cortex in the physical model that the brief names; boundary elements are solved when first read."""
     conductivities = np.array(brief.conductivities)
     if brief.model == "boundary_elements":

@@ -9,7 +9,7 @@ import numpy as np
 from layout.evidence.dipole_fit import Forward
 from layout.physics.boundary_cortex import BoundaryCortex
 from layout.physics.boundary_model import LEAST_DEPTH
-from layout.physics.channels import Channels, HeadModel
+from layout.physics.channels import Channels, CortexModel
 from layout.physics.derivatives import lead_field_derivatives
 from layout.physics.differences import LeadFieldDerivatives, central_differences
 from layout.physics.nearest_point import nearest_on_surface
@@ -38,7 +38,7 @@ def some_channels(channels: Channels, rows: np.ndarray) -> Channels:
     return Channels(*arrays, pickup)
 
 
-def forward_of(channels: Channels, cortex: HeadModel, whitener: np.ndarray) -> Forward:
+def forward_of(channels: Channels, cortex: CortexModel, whitener: np.ndarray) -> Forward:
     """The forward model of the channels, its rows whitened by `whitener` (n_rows, n_channels)."""
 
     def whitened(rows: np.ndarray) -> np.ndarray:
@@ -57,7 +57,7 @@ def forward_of(channels: Channels, cortex: HeadModel, whitener: np.ndarray) -> F
     return Forward(gain, slopes, lambda places: held_inside(cortex, places))
 
 
-def fields_at(channels: Channels, cortex: HeadModel, places: np.ndarray, moments: np.ndarray) -> LeadFieldDerivatives:
+def fields_at(channels: Channels, cortex: CortexModel, places: np.ndarray, moments: np.ndarray) -> LeadFieldDerivatives:
     """Gain and accurate slopes of the channels for moments (m, 3) [A·m] at places (m, 3) [m] in the brain."""
     if isinstance(cortex, BoundaryCortex):
 
@@ -69,7 +69,7 @@ def fields_at(channels: Channels, cortex: HeadModel, places: np.ndarray, moments
     return lead_field_derivatives(channels, moved, np.arange(len(places)), moments)
 
 
-def held_inside(cortex: HeadModel, places: np.ndarray) -> np.ndarray:
+def held_inside(cortex: CortexModel, places: np.ndarray) -> np.ndarray:
     """The places (n, 3) [m], those outside the brain or too near to its surface for the model moved inward."""
     head = cortex.head
     if head.sphere is not None:
@@ -88,7 +88,7 @@ def held_inside(cortex: HeadModel, places: np.ndarray) -> np.ndarray:
     return places
 
 
-def volume_grid(cortex: HeadModel, spacing: float) -> np.ndarray:
+def volume_grid(cortex: CortexModel, spacing: float) -> np.ndarray:
     """A cubic lattice (m, 3) [m] of that spacing through the whole of the brain."""
     corners = cortex.head.inner_skull.vertices
     axes = [np.arange(low, high, spacing) for low, high in zip(corners.min(axis=0), corners.max(axis=0), strict=True)]

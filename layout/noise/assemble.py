@@ -10,12 +10,12 @@ from layout.noise.calibration import Calibration
 from layout.noise.eyes import eye_columns
 from layout.noise.model import NoiseModel, noise_model
 from layout.noise.surroundings import surroundings_columns
-from layout.physics.channels import Channels, HeadModel
+from layout.physics.channels import Channels, CortexModel
 
 
 def assemble_noise(
     channels: Channels,
-    cortex: HeadModel,
+    cortex: CortexModel,
     noise: NoiseBrief,
     calibration: Calibration,
     labels: np.ndarray,

@@ -6,12 +6,12 @@ from itertools import pairwise
 
 import numpy as np
 
-from layout.physics.channels import Channels, HeadModel
+from layout.physics.channels import Channels, CortexModel
 
 GAIN_AT_ONCE = 16_000_000  # numbers: keeps the lead field to all sources out of memory at once
 
 
-def background_columns(channels: Channels, cortex: HeadModel, labels: np.ndarray, areas: np.ndarray) -> np.ndarray:
+def background_columns(channels: Channels, cortex: CortexModel, labels: np.ndarray, areas: np.ndarray) -> np.ndarray:
     """Response of the channels to each patch at a moment density of 1 A/m (n_channels, n_columns) [V or T].
 
     labels (n_sources,): the sources' patches; areas (n_sources,) [m²]: of background at each. Moments

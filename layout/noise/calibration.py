@@ -10,7 +10,7 @@ import numpy as np
 from layout.brief.objects import NoiseBrief
 from layout.noise.background import average_referenced_rms, background_columns
 from layout.noise.eyes import eye_moment
-from layout.physics.channels import HeadModel, electrodes_at, joined, normal_magnetometers_above
+from layout.physics.channels import CortexModel, electrodes_at, joined, normal_magnetometers_above
 from layout.units import FT, MM, MM2, NAM, UV
 
 if TYPE_CHECKING:
@@ -118,7 +118,7 @@ class Calibration:
 
 
 def calibrate(
-    cortex: HeadModel,
+    cortex: CortexModel,
     nominal: np.ndarray,
     noise: NoiseBrief,
     labels: np.ndarray,

@@ -30,7 +30,7 @@ from layout.noise.recorded_strengths import (
 )
 from layout.noise.strength_fit import fit_strengths
 from layout.noise.surroundings import surroundings_columns
-from layout.physics.channels import Channels, HeadModel
+from layout.physics.channels import Channels, CortexModel
 from layout.sensing.sites import FARTHEST_OFF_SCALP
 from layout.sensing.zones import zone_mask
 from layout.units import FT, FT_PER_CM, UV
@@ -43,7 +43,7 @@ def with_recording(
     calibration: Calibration,
     brief: Brief,
     head: Head,
-    cortex: HeadModel,
+    cortex: CortexModel,
     labels: np.ndarray,
     standard: dict[str, np.ndarray],
 ) -> Calibration:

@@ -29,7 +29,7 @@ from layout.outputs.plain import fixed, one_line, shortened
 from layout.outputs.terminal import new_table, print_figures, print_notes, say
 from layout.outputs.views import View, four_views
 from layout.physics.boundary_cortex import BoundaryCortex
-from layout.physics.channels import HeadModel
+from layout.physics.channels import CortexModel
 from layout.physics.nearest_point import nearest_on_surface
 from layout.physics.sphere_model import Displacements
 from layout.sensing.candidates import Candidates
@@ -61,7 +61,7 @@ class Check:
     conflicts: np.ndarray
     kept: tuple[int, ...]
     reference: int | None
-    model: HeadModel
+    model: CortexModel
     displacements: Displacements
     figures_of_noise: dict[str, Figure]
 

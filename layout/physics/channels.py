@@ -22,7 +22,7 @@ from layout.physics.sphere_model import Displacements, MappedCortex, SphereModel
 from layout.sensing.candidates import Candidates
 from layout.sensing.pickup import Pickup, point_pickup
 
-HeadModel = MappedCortex | BoundaryCortex  # a head's cortex in the physical model that reads it
+CortexModel = MappedCortex | BoundaryCortex  # a head's cortex in the physical model that reads it
 
 
 @dataclass(frozen=True)
@@ -76,7 +76,7 @@ class Channels:
             return placed
         return place_pickup(sphere, head, self.positions, self.normals, placed, self.pickup)
 
-    def lead_field(self, cortex: HeadModel, sources: np.ndarray, free: bool) -> LeadField:
+    def lead_field(self, cortex: CortexModel, sources: np.ndarray, free: bool) -> LeadField:
         """Lead field to the numbered sources of the cortex, along their normals or free."""
         if isinstance(cortex, BoundaryCortex):
             points = self.points
@@ -93,7 +93,7 @@ class Channels:
             self.pickup,
         )
 
-    def lead_field_at(self, cortex: HeadModel, positions: np.ndarray, normals: np.ndarray | None) -> np.ndarray:
+    def lead_field_at(self, cortex: CortexModel, positions: np.ndarray, normals: np.ndarray | None) -> np.ndarray:
         """Gain (n, m) along normals (m, 3), or (n, m, 3) of free moments, to sources (m, 3) [m] in the brain."""
         if isinstance(cortex, BoundaryCortex):
             points = self.points
@@ -110,7 +110,7 @@ class Channels:
             self.pickup,
         ).gain
 
-    def displacements(self, cortex: HeadModel) -> Displacements:
+    def displacements(self, cortex: CortexModel) -> Displacements:
         """How far the model moves these channels and the whole cortex."""
         if isinstance(cortex, BoundaryCortex):
             return cortex.displacements(self.positions, self.is_electrode)
@@ -124,7 +124,7 @@ class Channels:
             cortex.sources,
         )
 
-    def eye_gain(self, cortex: HeadModel) -> np.ndarray:
+    def eye_gain(self, cortex: CortexModel) -> np.ndarray:
         """Gain (n, 2, 3) [V or T per A·m] to a free dipole at each eye."""
         if isinstance(cortex, BoundaryCortex):
             points = self.points

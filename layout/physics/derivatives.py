@@ -11,7 +11,7 @@ import numpy as np
 from layout.anatomy.head import Head, Surface
 from layout.anatomy.mesh_graph import face_vectors
 from layout.physics.boundary_cortex import BoundaryCortex
-from layout.physics.channels import Channels, HeadModel
+from layout.physics.channels import Channels, CortexModel
 from layout.physics.differences import LeadFieldDerivatives
 from layout.physics.nearest_point import NearestPoints, nearest_on_surface
 from layout.physics.sphere_derivatives import electric_derivatives, magnetic_derivatives
@@ -21,7 +21,7 @@ LEAST_FOCUS = 0.25  # 1 - depth x curvature is held here: a source at a centre o
 
 
 def lead_field_derivatives(
-    channels: Channels, cortex: HeadModel, members: np.ndarray, moments: np.ndarray
+    channels: Channels, cortex: CortexModel, members: np.ndarray, moments: np.ndarray
 ) -> LeadFieldDerivatives:
     """Lead field and its derivative at the numbered sources (m,) of the cortex, moments (m, 3) [A·m].
 
