@@ -286,7 +286,7 @@ def lead_field(brief: Path, out: Path | None) -> None:
 def assess(brief: Path, layouts: tuple[str, ...], within_mm: float, other_models: bool, out: Path | None) -> None:
     """Judge given layouts under BRIEF: value, bound, per region, per channel, side by side.
 
-    A LAYOUT is an electrodes.tsv, the sensors.csv of an earlier run, or names of positions with commas between.
+    LAYOUTS: each an electrodes.tsv, the sensors.csv of an earlier run, or names of positions with commas between.
 
     \b
     Example: layout assess configs/readme.toml "Fz,Cz,Pz,C3,C4,T7,T8,Oz"
@@ -372,7 +372,9 @@ def placement(
     failing: int,
     out: Path | None,
 ) -> None:
-    """How exactly each sensor must be placed, what replaces it, and what failures and misplacement cost.
+    """How exactly each sensor of a layout must be placed, what replaces it, and what failures and misplacement cost.
+
+    The layout is the best for BRIEF, another rank, or a given one.
 
     \b
     Example: layout placement configs/readme.toml

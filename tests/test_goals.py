@@ -183,6 +183,20 @@ def test_rules_that_clash_are_named():
     assert "spacing_mm" in str(refused.value)
 
 
+def test_the_audit_holds_the_tree_behind_the_bound():
+    result = design(brief_of(*FIELD))
+    tree = {name.removeprefix("proof_0_"): array for name, array in result.audit.items() if name.startswith("proof_0_")}
+    assert tree["parent"][0] == -1
+    assert (tree["parent"][1:] < np.arange(1, len(tree["parent"]))).all()
+    leaves = ~np.isin(np.arange(len(tree["parent"])), tree["parent"])
+    best = result.layouts[0]
+    assert best.bound == pytest.approx(float(tree["bound"]), rel=1e-12)
+    assert tree["limit"][leaves].max() <= best.bound + 1e-9 or best.proven
+    assert tree["limit"][0] >= best.bound - 1e-9
+    held = tree["chosen"][tree["chosen"] >= 0]
+    assert held.size == 0 or held.max() < len(result.candidates)
+
+
 @pytest.mark.slow
 def test_free_axes_beat_a_list_and_stay_under_their_bound():
     listed = design(brief_of(SPHERE, TWO_REGIONS, coils(3, "grid_mm = 50", 'axes = "any_of_three"\n'), BAND, QUICK))

@@ -368,7 +368,8 @@ _SEARCH = """\
 # starts = 20   # the search starts from this many different layouts, 1 to 1000
 # ranked = 3   # layouts to hand back, 1 to 50
 # differ_by = 0   # sensors in which they must differ at least; 0: chosen from the number of sensors
-# proof_parts = 1000   # how far branch and bound may go to narrow the gap; 0: not at all
+# proof_parts is how far branch and bound may go to narrow the gap, 0 for not at all; if left out, 1000 parts
+# of the tree, or 20 for goals that take long.
 # proof_ranks = 1   # how many of the ranked layouts it works on
 # polish = false   # true: after the search, slide the sensors along the scalp
 # With time_allowance_s (seconds) the search stops by the clock; left out, it stops when its work is done.

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import csv
 from pathlib import Path
 
 import numpy as np
@@ -11,12 +10,11 @@ from scipy.spatial import cKDTree
 from layout.brief.objects import Brief
 from layout.errors import BriefError, FileError
 from layout.sensing.candidates import Candidates
-from layout.sensing.electrodes_file import read_electrodes
+from layout.sensing.layout_table import read_layout_table
 from layout.sensing.names import named_singles
 from layout.units import MM
 
 FARTHEST = 5e-3  # [m] a listed sensor farther from every candidate site is none of them
-_SENSOR_COLUMNS = ("number", "name", "kind", "scalp_x_mm", "scalp_y_mm", "scalp_z_mm", "axis")
 
 
 def existing_singles(brief: Brief, candidates: Candidates) -> dict[str, np.ndarray]:
@@ -38,27 +36,26 @@ def existing_singles(brief: Brief, candidates: Candidates) -> dict[str, np.ndarr
 
 
 def _from_table(brief: Brief, singles: Candidates, path: Path) -> dict[str, np.ndarray]:
-    if _is_sensor_table(path):
-        names, points, kinds, axes = _read_sensors(path)
-    else:
-        names, points = read_electrodes(path)
-        electrodes = [entry.name for entry in brief.stock if entry.kind == "electrode"]
-        kinds, axes = [electrodes or None] * len(names), [None] * len(names)
+    sensors = read_layout_table(path)
+    points = np.array([sensor.position for sensor in sensors])
+    electrodes = [entry.name for entry in brief.stock if entry.kind == "electrode"]
     used = np.unique(singles.site)
     away, nearest = cKDTree(singles.sites.positions[used]).query(points)
     kind_names = np.array([entry.name for entry in brief.stock])[singles.kind]
     found: dict[str, np.ndarray] = {}
-    for i, name in enumerate(names):
+    for i, sensor in enumerate(sensors):
+        name = sensor.name
         if away[i] > FARTHEST:
             raise FileError(
                 f"{path}: sensors must be within {FARTHEST / MM:g} mm of a site where the stock may sit, but {name!r} "
                 f"is {away[i] / MM:.1f} mm off"
             )
         here = np.flatnonzero(singles.site == used[nearest[i]])
-        if kinds[i] is not None:
-            here = here[np.isin(kind_names[here], kinds[i])]
-        if axes[i] is not None:
-            here = here[[singles.axis_name[one] == axes[i] for one in here]]
+        kinds = (electrodes or None) if sensor.is_electrode else [sensor.kind]
+        if kinds is not None:
+            here = here[np.isin(kind_names[here], kinds)]
+        if sensor.axis_name is not None:
+            here = here[[singles.axis_name[one] == sensor.axis_name for one in here]]
         if len(here) == 0:
             raise FileError(f"{path}: sensors must be of a kind and axis that the stock has there, but {name!r} is not")
         found[f"existing.layout_tsv {name!r}"] = here
@@ -78,37 +75,3 @@ def only_choice(here: np.ndarray, said: str) -> int:
             f"{len(here)} are there"
         )
     return int(here[0])
-
-
-def _is_sensor_table(path: Path) -> bool:
-    try:
-        with path.open(encoding="utf-8-sig", newline="") as file:
-            return file.readline(2000).split(",")[0].strip() == "number"
-    except (OSError, UnicodeDecodeError) as problem:
-        raise FileError(f"{path}: must be a readable UTF-8 text file, but {problem}") from None
-
-
-def _read_sensors(path: Path) -> tuple[list[str], np.ndarray, list[list[str]], list[str | None]]:
-    """Names, scalp positions (n, 3) [m], kinds and axes of a sensors.csv, one row a sensor."""
-    try:
-        with path.open(encoding="utf-8-sig", newline="") as file:
-            rows = list(csv.DictReader(file))
-    except (OSError, UnicodeDecodeError, csv.Error) as problem:
-        raise FileError(f"{path}: must be a readable UTF-8 CSV file, but {problem}") from None
-    lacking = [column for column in _SENSOR_COLUMNS if not rows or rows[0].get(column) is None]
-    if lacking:
-        raise FileError(f"{path}: must list sensors with the columns {', '.join(_SENSOR_COLUMNS)}")
-    first_rows = {row["number"]: (number, row) for number, row in reversed(list(enumerate(rows, start=2)))}
-    names, points, kinds, axes = [], [], [], []
-    for number, row in sorted(first_rows.values(), key=lambda item: item[0]):
-        try:
-            point = [float(row[f"scalp_{letter}_mm"]) for letter in "xyz"]
-        except (TypeError, ValueError):
-            point = [np.nan]
-        if not np.isfinite(point).all() or row["axis"] is None:
-            raise FileError(f"{path} line {number}: scalp_x_mm, scalp_y_mm and scalp_z_mm must be finite numbers")
-        names.append(row["name"])
-        points.append(point)
-        kinds.append([row["kind"]])
-        axes.append(row["axis"])
-    return names, np.array(points) * MM, kinds, axes

@@ -49,7 +49,7 @@ def read_layout_table(path: Path) -> list[ListedSensor]:
             rows = list(csv.DictReader(file))
     except (OSError, UnicodeDecodeError, csv.Error) as problem:
         raise FileError(f"{path}: must be a readable UTF-8 CSV file, but {problem}") from None
-    if not rows or any(column not in rows[0] for column in _COLUMNS):
+    if not rows or any(rows[0].get(column) is None for column in _COLUMNS):
         raise FileError(f"{path}: must list sensors with the columns {', '.join(_COLUMNS)}")
     sensors: dict[str, ListedSensor] = {}
     for line, row in enumerate(rows, start=2):
@@ -91,5 +91,5 @@ def _numbers(path: Path, line: int, row: dict[str, str], columns: tuple[str, ...
     except (TypeError, ValueError, KeyError):
         values = np.full(3, np.nan)
     if not np.isfinite(values).all():
-        raise FileError(f"{path} line {line}: {', '.join(columns)} must be finite numbers")
+        raise FileError(f"{path} line {line}: {', '.join(columns[:-1])} and {columns[-1]} must be finite numbers")
     return values
