@@ -4,6 +4,8 @@ import os
 import sys
 from pathlib import Path
 
-# Tests run in one process per core; two BLAS threads in each would wait for each other. Read when numpy loads.
+# Tests run in one process per core; two threads in each would wait for each other. Read when numpy and
+# numba load.
 os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")
+os.environ.setdefault("NUMBA_NUM_THREADS", "1")
 sys.path.insert(0, str(Path(__file__).parent))

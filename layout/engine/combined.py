@@ -124,6 +124,11 @@ class WeightedSum(_Goals):
         if len(self.weights) != len(self.goals) or not all(0 < weight < np.inf for weight in self.weights):
             raise LayoutError(f"weights must be positive, one for each of {len(self.goals)} goals, not {self.weights}.")
 
+    @property
+    def highest(self) -> float:
+        """The same sum of what the members can reach at most."""
+        return float(self._sum(np.array([goal.highest for goal in self.goals])))
+
     def _sum(self, parts: np.ndarray) -> np.ndarray:
         return self.constant + np.tensordot(self.weights, parts, axes=1)
 
@@ -186,6 +191,11 @@ class Worst(_Goals):
     def steepness(self) -> float:
         """Steepness of the soft minimum, per unit of score."""
         return self.sharpness / (self.size or typical_size(self.goals))
+
+    @property
+    def highest(self) -> float:
+        """The least of what the members can reach at most."""
+        return min(goal.highest for goal in self.goals)
 
     @staticmethod
     def _least(parts: np.ndarray) -> np.ndarray:

@@ -56,6 +56,11 @@ class Limited:
         """Which candidates see the flat offset (n_candidates,) bool."""
         return self.goal.has_offset
 
+    @property
+    def highest(self) -> float:
+        """That of the goal without limits."""
+        return self.goal.highest
+
     def errors(self, chosen: np.ndarray) -> np.ndarray:
         """The limited errors of a set (n_limits,) [m]."""
         return np.array([-member.score(chosen) for member, _ in self.limits])

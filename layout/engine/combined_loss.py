@@ -41,6 +41,11 @@ class AnyOneLost:
         """Which candidates see the flat offset (n_candidates,) bool."""
         return self.goal.has_offset
 
+    @property
+    def highest(self) -> float:
+        """That of the goal without losses."""
+        return self.goal.highest
+
     @cached_property
     def steepness(self) -> float:
         """Steepness of the soft minimum, per unit of score."""

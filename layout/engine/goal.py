@@ -57,6 +57,10 @@ class Goal(Protocol):
     def has_offset(self) -> np.ndarray:
         """Which candidates see the flat offset (n_candidates,) bool; the first of them alone carries nothing."""
 
+    @property
+    def highest(self) -> float:
+        """What no set can score whatever it holds: inf, or 0 for minus an error."""
+
     def score(self, chosen: np.ndarray) -> float:
         """Score of a set, from the goal's rows, sharing nothing with `priced`."""
 

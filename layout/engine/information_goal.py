@@ -27,6 +27,11 @@ class InformationGoal:
         """Which candidates see the flat offset (n_candidates,) bool."""
         return self.model.has_offset
 
+    @property
+    def highest(self) -> float:
+        """Bits have no limit of their own."""
+        return np.inf
+
     def score(self, chosen: np.ndarray) -> float:
         """Information of the chosen candidates [bits]."""
         return information(self.model, chosen)

@@ -178,6 +178,11 @@ class LocalisationGoal:
         errors = self.errors(chosen)
         return -float(np.sqrt(self.model.share @ errors**2) if self.kind == "rms" else errors.max())
 
+    @property
+    def highest(self) -> float:
+        """No error is negative."""
+        return 0.0
+
     def pairs(self, candidates: np.ndarray) -> np.ndarray:
         """Score of every pair of single-channel candidates that see the offset (n, n) [m].
 

@@ -22,6 +22,7 @@ from layout.engine.model import LinearModel
 from layout.engine.search import exchange, greedy, improves, random_set
 from layout.engine.starts import drawn, rounded, shaken
 
+ROOT_SHARE = 0.25  # of the time allowance that is always left for the root's limit
 PROVEN_PERCENT = 0.1  # a gap within this is called proven
 
 
@@ -104,7 +105,7 @@ def rank_layouts(
         InformationGoal(goal) if isinstance(goal, LinearModel) else goal,
         feasible,
         np.arange(feasible.n_candidates) if places is None else places,
-        None if time_allowance is None else time.monotonic() + time_allowance,
+        time_allowance,
         tolerance,
         progress,
     )
@@ -121,14 +122,21 @@ class _Search:
         goal: Goal,
         feasible: Feasible,
         places: np.ndarray,
-        deadline: float | None,
+        allowance: float | None,
         tolerance: float,
         progress: Callable[[str], None],
     ) -> None:
         self._goal, self._feasible, self._places = goal, feasible, places
-        self._deadline, self._tolerance, self._progress = deadline, tolerance, progress
+        self._allowance, self._tolerance, self._progress = allowance, tolerance, progress
+        self._deadline = None if allowance is None else time.monotonic() + allowance
         self._pool: list[tuple[float, np.ndarray]] = []
         self._swaps = 0
+
+    def _deadline_of_root(self) -> float | None:
+        """The root's limit gets a part of the time allowance even where the first layout took all of it."""
+        if self._deadline is None:
+            return None
+        return max(self._deadline, time.monotonic() + ROOT_SHARE * self._allowance)
 
     def _late(self) -> bool:
         return self._deadline is not None and time.monotonic() > self._deadline
@@ -153,7 +161,9 @@ class _Search:
         leader = self._leader()[1]
         if isinstance(self._goal, Limited):
             self._goal = self._with_multipliers(self._goal, leader)
-        self._root = tighten(self._goal, self._feasible, leader, tolerance=self._tolerance, deadline=self._deadline)
+        self._root = tighten(
+            self._goal, self._feasible, leader, tolerance=self._tolerance, deadline=self._deadline_of_root()
+        )
         for number in range(1, starts):
             if self._late():
                 break
@@ -190,7 +200,7 @@ class _Search:
         self._progress("rank-aware bound")
         limits = limits_for(self._goal, self._feasible, self._root, self._deadline, self._tolerance, self._progress)
         by_rank = limits.by_rank()
-        top = min(self._root.value, by_rank.value) if by_rank else self._root.value
+        top = min(self._root.value, by_rank.value if by_rank else np.inf, self._goal.highest)
         proofs: list[Proof] = []
         while True:
             found, rules, more = settled_order(

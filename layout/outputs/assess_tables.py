@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING
 from layout.evidence.wrong_models import OrderChange
 from layout.outputs.cautions import CAUTIONS
 from layout.outputs.curve_tables import columns_text, csv_text, gap_of, share_of
-from layout.outputs.plain import fixed, one_line, rounded_up, shortened, significant
+from layout.outputs.plain import bound_text, fixed, one_line, rounded_up, shortened, significant
 from layout.outputs.result import RegionFigure
 from layout.units import MM
 
@@ -224,7 +224,7 @@ def print_assessment(found: Assessment, console: Console) -> None:
         table.add_column(heading, justify="right", max_width=8)
     for one in found.layouts:
         shares = [fixed(_share(one.value, best, unit), 1, "-") for best in (one.best, one.bound, top)]
-        bound = rounded_up(one.bound, 3, "-") if unit == "bits" else fixed(one.bound, 3, "-")
+        bound = bound_text(one.bound, unit, "-")
         cells = [str(len(one.names)), fixed(one.value, 3), fixed(one.best, 3, "-"), bound, *shares]
         table.add_row(Text(shortened(one.name, 60)), *cells)
     console.print(table)

@@ -10,7 +10,7 @@ from typing import TYPE_CHECKING
 
 from layout.evidence.curve import first_to_reach, knee
 from layout.outputs.cautions import CAUTIONS
-from layout.outputs.plain import fixed, one_line, rounded_up, significant
+from layout.outputs.plain import bound_text, fixed, one_line, rounded_up, significant
 
 if TYPE_CHECKING:
     from rich.console import Console
@@ -226,7 +226,7 @@ def print_curve(curve: Curve, console: Console) -> None:
             *([] if curve.by == "count" else [significant(one.spent, 6)]),
             f"{one.sensors}{'*' if place == at else ''}",
             fixed(one.value, 3),
-            rounded_up(one.bound, 3) if curve.unit == "bits" else fixed(one.bound, 3),
+            bound_text(one.bound, curve.unit),
             rounded_up(gap_of(one.value, one.bound, curve.unit), 1),
             fixed(curve.share(one.value), 1),
             fixed(one.even_spread, 3, "-"),

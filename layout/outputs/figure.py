@@ -12,7 +12,7 @@ import numpy as np
 
 from layout.anatomy.head import Head, Region
 from layout.outputs.backdrop import Backdrop, paint_backdrop, region_colour, window
-from layout.outputs.plain import fixed, rounded_up, shortened
+from layout.outputs.plain import bound_text, fixed, rounded_up, shortened
 from layout.outputs.result import DesignResult, RankedLayout, SensorRow
 from layout.outputs.spreading import spread_apart
 from layout.outputs.views import View, four_views
@@ -289,7 +289,7 @@ def _kind_colour(row: SensorRow) -> str:
 def _subtitle(result: DesignResult, layout: RankedLayout) -> str:
     return (
         f"Layout {layout.rank}: {fixed(layout.value, 3)} {result.unit}, "
-        f"bound {rounded_up(layout.bound, 3)} {result.unit}, gap {rounded_up(layout.gap_percent, 2)} %"
+        f"bound {bound_text(layout.bound, result.unit)} {result.unit}, gap {rounded_up(layout.gap_percent, 2)} %"
     )
 
 

@@ -38,6 +38,13 @@ def rounded_up(value: float | None, digits: int, missing: str = "") -> str:
     return fixed(math.ceil(value * scale - 1e-6) / scale, digits)
 
 
+def bound_text(value: float | None, unit: str, missing: str = "") -> str:
+    """A bound with three decimals that is still one: rounded up for bits, down for an error in mm."""
+    if unit == "bits" or value is None or not math.isfinite(value):
+        return rounded_up(value, 3, missing)
+    return fixed(math.floor(value * 1000 + 1e-6) / 1000, 3)
+
+
 def significant(value: float | None, digits: int, missing: str = "") -> str:
     """`value` with `digits` significant digits; `missing` where it is None or not finite."""
     if value is None or not math.isfinite(value):

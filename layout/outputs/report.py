@@ -10,7 +10,7 @@ from typing import Any
 from layout.outputs.backdrop import region_colour
 from layout.outputs.cautions import CAUTIONS
 from layout.outputs.figure import Picture
-from layout.outputs.plain import fixed, one_line, rounded_up, significant
+from layout.outputs.plain import bound_text, fixed, one_line, rounded_up, significant
 from layout.outputs.result import DesignResult, RankedLayout, SensorRow
 from layout.outputs.words import (
     CLOCK_SENTENCE,
@@ -47,6 +47,7 @@ def report_html(result: DesignResult, pictures: Sequence[Picture]) -> str:
     environment.filters.update(
         fixed=lambda value, digits: fixed(value, digits, "–"),
         rounded_up=lambda value, digits: rounded_up(value, digits, "–"),
+        bound_text=lambda value, unit: bound_text(value, unit, "–"),
         significant=lambda value, digits: significant(value, digits, "–"),
         one_line=one_line,
     )

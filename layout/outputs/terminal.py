@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING
 
-from layout.outputs.plain import fixed, one_line, rounded_up, significant
+from layout.outputs.plain import bound_text, fixed, one_line, rounded_up, significant
 from layout.outputs.result import DesignResult, RankedLayout
 from layout.outputs.words import (
     CLOCK_SENTENCE,
@@ -94,7 +94,7 @@ def _ranked(result: DesignResult) -> Table:
         table.add_row(
             str(layout.rank),
             fixed(layout.value, 3, "-"),
-            rounded_up(layout.bound, 3, "-"),
+            bound_text(layout.bound, result.unit, "-"),
             rounded_up(layout.gap_percent, 2, "-"),
             "yes" if layout.proven else "no",
             significant(layout.cost, 6, "-"),

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from layout.noise.calibration import Figure
-from layout.outputs.plain import fixed, one_line, rounded_up
+from layout.outputs.plain import bound_text, fixed, one_line, rounded_up
 from layout.outputs.result import DesignResult, RankedLayout, SensorRow
 from layout.units import MM
 
@@ -12,7 +12,7 @@ CLOCK_SENTENCE = (
 )
 RANKED_COLUMNS = (
     "price: sum of the prices; sensors moved: against the nearest earlier rank; equals even spread of: how many "
-    "sensors an even spread needs for as many bits"
+    "sensors an even spread needs to do as well"
 )
 HOUSINGS_COLUMN = "housings meet: pairs of housings that would share space"
 
@@ -29,9 +29,10 @@ def bound_sentence(result: DesignResult) -> str:
     """What the certificate says about rank 1."""
     best = result.layouts[0]
     within = fixed(result.proven_within, 2).rstrip("0").rstrip(".")
-    bound, gap = rounded_up(best.bound, 3), rounded_up(best.gap_percent, 2)
+    bound, gap = bound_text(best.bound, result.unit), rounded_up(best.gap_percent, 2)
+    passes = "passes" if result.unit == "bits" else "goes below"
     claim = (
-        f"No allowed layout of these candidates passes {bound} {result.unit} under this model: "
+        f"No allowed layout of these candidates {passes} {bound} {result.unit} under this model: "
         f"layout 1 is within {gap} %"
     )
     if result.bound_from:

@@ -8,7 +8,7 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from layout.outputs.plain import fixed, for_json, one_line, rounded_up, shortened, significant
+from layout.outputs.plain import bound_text, fixed, for_json, one_line, rounded_up, shortened, significant
 
 floats = st.floats(-1e6, 1e6)
 
@@ -62,3 +62,9 @@ def test_for_json_knows_no_nan():
 def test_for_json_refuses_what_it_does_not_know():
     with pytest.raises(TypeError, match="set"):
         for_json({1, 2})
+
+
+@pytest.mark.parametrize(("value", "unit", "text"), [(1.00011, "bits", "1.001"), (1.00099, "mm", "1.000")])
+def test_a_printed_bound_is_still_one(value, unit, text):
+    assert bound_text(value, unit) == text
+    assert bound_text(None, unit, "-") == bound_text(float("nan"), unit, "-") == "-"
