@@ -136,6 +136,7 @@ def test_the_standard_set_of_models_changes_the_skull_and_on_the_template_the_he
     assert len(asked_models(four).heads) == 2
 
 
+@pytest.mark.slow
 def test_the_command_writes_a_folder_and_fits_a_terminal(tmp_path, monkeypatch):
     monkeypatch.chdir(tmp_path)
     monkeypatch.setenv("COLUMNS", "80")

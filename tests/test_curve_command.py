@@ -63,6 +63,7 @@ def test_more_money_buys_no_less():
         curve(brief_of(*FEW), parse_amounts("budget", "40,50"))
 
 
+@pytest.mark.slow
 def test_a_run_cut_short_goes_on_and_gives_the_same_bytes(tmp_path):
     brief, counts = brief_of(*FEW), parse_amounts("count", "3,5,6")
     key = run_key(brief, counts, False)

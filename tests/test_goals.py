@@ -26,6 +26,7 @@ def problems_of(brief):
     return study, [build_problem(study, scenario=one) for one in scenarios(study)]
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize("tables", [FEW, FIELD])
 @pytest.mark.parametrize("over", ["rms", "worst"])
 def test_localisation_is_reported_in_mm_and_bounded_from_below(tables, over):

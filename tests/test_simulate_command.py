@@ -44,6 +44,7 @@ def test_tables_files_and_json_agree(tmp_path):
     assert json.loads(again.output) == content
 
 
+@pytest.mark.slow
 def test_both_kinds_of_sensors_and_a_layout_by_names_or_by_table(tmp_path):
     names = run(tmp_path, "--layout", "Fz, C3, C4, Pz, T3, O2", "--json")
     assert names.exit_code == 0, names.output

@@ -47,7 +47,7 @@ def variants(brief: Brief) -> list[tuple[str, Brief]]:
 
 def ranked(study: Study, model: LinearModel, count: int, parts: int) -> tuple[Ranking, float]:
     """The first layout of `count` sensors and the seconds that search and bounds took."""
-    feasible = replace(study.feasible, counts=np.array([count]))
+    feasible = replace(study.feasible, counts=np.array([count]), least=np.array([count]))
     search = study.brief.search
     start = time.perf_counter()
     ranking = rank_layouts(

@@ -69,6 +69,7 @@ def test_252_nodes_a_surface_are_within_a_few_per_cent(coarse, depth):
         assert np.abs(mag - 1).max() < 0.04
 
 
+@pytest.mark.slow
 def test_second_order_in_the_edge_length(coarse):
     """Linear elements on flat faces: the error falls at least as the square of the edge."""
     fine = sphere_model(7)
