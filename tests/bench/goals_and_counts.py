@@ -77,8 +77,8 @@ def main() -> None:
             f"{platform.processor() or platform.machine()}, Python {platform.python_version()}, "
             f"{datetime.date.today()}.",
             "",
-            f"Boundary elements; up to {seconds:g} s of search, bound and branch and bound for each row, so some bounds of "
-            "the localisation error are cut short by the clock.",
+            f"Boundary elements; up to {seconds:g} s of search, bound and branch and bound for each row, so some "
+            "bounds of the localisation error are cut short by the clock.",
             "",
             "| sensors | candidates | goal | count | value | bound | gap % | parts | s |",
             "|" + "---|" * 9,
