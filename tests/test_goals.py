@@ -146,6 +146,13 @@ def test_a_budget_with_blocks_of_channels():
     assert result.layouts[0].bound >= result.layouts[0].value
 
 
+@pytest.mark.parametrize("total", [0.5, 1.5])
+def test_a_budget_that_buys_nothing_useful_is_one_sentence(total):
+    """Nothing at all, or one electrode, which against an unknown reference tells nothing."""
+    with pytest.raises(InfeasibleError, match=r"budget\.total: must pay for sensors that tell something"):
+        design(brief_of(SPHERE, TWO_REGIONS, cups(4, 'family = "10-20"'), BAND, QUICK, f"[budget]\ntotal = {total}\n"))
+
+
 def test_left_right_pairs_and_the_ground():
     places = '[places]\nleft_right_pairs = true\nground = "AFz"\n'
     result = design(brief_of(SPHERE, TWO_REGIONS, cups(7, 'family = "10-10"'), BAND, QUICK, places))

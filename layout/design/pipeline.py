@@ -19,6 +19,7 @@ from layout.design.scenarios import scenarios
 from layout.design.study import Progress, Study, lay_out_study, silent
 from layout.engine.bound import tighten
 from layout.engine.ranking import PROVEN_PERCENT
+from layout.engine.search import improves
 from layout.engine.smallest import smallest_count
 from layout.errors import InfeasibleError
 from layout.evidence.baselines import equal_even_spread, yardsticks
@@ -37,6 +38,11 @@ def design(brief: Brief, progress: Progress = silent) -> DesignResult:
         study = _of_count(study, reach.found or max(reach.values))
     found = find_layouts(study, objective, progress)
     best = found.layouts[0]
+    if brief.budget is not None and not improves(best.value, objective.goal.score(np.zeros(0, dtype=int))):
+        raise InfeasibleError(
+            "budget.total: must pay for sensors that tell something (electrodes: two, a contact and the reference), "
+            f"but {brief.budget.total:g} was given"
+        )
     if objective.breaks_limits(best.chosen):
         raise _limits_unmet(brief, study, objective, best.chosen)
     return DesignResult(
