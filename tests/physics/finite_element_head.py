@@ -12,6 +12,7 @@ from functools import cached_property
 
 import numpy as np
 import pyamg
+from scipy.sparse import csr_array
 from scipy.sparse.linalg import cg
 from skfem import Basis, BilinearForm, ElementTetP0, ElementTetP2, FacetBasis, LinearForm, MeshTet, asm
 from skfem.helpers import dot, grad
@@ -72,6 +73,10 @@ class FiniteElementHead:
             return v
 
         matrix = asm(stiffness, self.basis, sigma=conductivity).tocsr()
+        # Grounded at one unknown: the equations fix a potential up to a constant, and rounding made the iteration
+        # stall. The loads sum to zero, so no current flows there.
+        ground = csr_array(([matrix.diagonal().mean()], ([0], [0])), shape=matrix.shape)
+        matrix = (matrix + ground).tocsr()
         mean = asm(ones, FacetBasis(mesh, ElementTetP2()))
         return matrix, pyamg.smoothed_aggregation_solver(matrix).aspreconditioner(), mean / mean.sum()
 
@@ -79,7 +84,7 @@ class FiniteElementHead:
         """Potential of a load, with zero mean over the scalp."""
         matrix, preconditioner, mean = self.solver
         load = load - load.sum() * mean
-        potential, failed = cg(matrix, load, rtol=1e-9, maxiter=500, M=preconditioner)
+        potential, failed = cg(matrix, load, rtol=1e-9, maxiter=2000, M=preconditioner)
         assert not failed
         return potential - mean @ potential
 
