@@ -7,7 +7,7 @@ import pytest
 from studies import BAND, SPHERE, TWO_REGIONS, brief_of, coils, cups
 
 from layout.design import build_problem, design, lay_out_study
-from layout.design.scenarios import scenarios
+from layout.design.scenarios import own_scenario, scenarios
 from layout.engine.information import information
 from layout.engine.localisation import linearised_errors
 from layout.errors import InfeasibleError
@@ -233,18 +233,13 @@ def test_polish_gains_and_is_what_the_lead_fields_say():
     assert polished.value > best.value
     assert polished.gain_percent == pytest.approx(100 * (polished.value / best.value - 1), rel=1e-6)
     study = lay_out_study(result.brief)
-    problem = build_problem(study)
+    own = own_scenario(study)
     where = np.array([sensor.position for sensor in polished.sensors])
-    channels = replace(
-        problem.scenario.channels,
-        positions=where,
-        axes=np.zeros((5, 3)),
-        is_electrode=np.ones(5, dtype=bool),
-        normals=where / np.linalg.norm(where, axis=1, keepdims=True),
-    )
-    # The row of a slid electrode, by the lead field at its place alone.
-    field = channels.lead_field(study.cortex, study.regions[0].members, free=True).gain
-    assert np.isfinite(field).all()
+    chosen = np.array([study.candidates.names.index(sensor.name) for sensor in polished.sensors])
+    positions = own.channels.positions.copy()
+    positions[chosen] = where  # one channel a candidate
+    there = build_problem(study, scenario=replace(own, channels=replace(own.channels, positions=positions)))
+    assert polished.value == pytest.approx(information(there.model, chosen), rel=1e-6)
     assert all(sensor.slid <= 60e-3 for sensor in polished.sensors)
     radius = study.cortex.sphere.outer_radius
     np.testing.assert_allclose(np.linalg.norm(where - study.cortex.sphere.centre, axis=1), radius, rtol=1e-3)
