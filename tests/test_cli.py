@@ -21,7 +21,7 @@ from layout import __version__, design
 from layout.cli import cli
 from layout.errors import LayoutError
 from layout.outputs import writer
-from layout.outputs.figure import Picture
+from layout.outputs.ranking import ranking_json
 
 ROOT = Path(__file__).parent.parent
 COMMANDS = {"layout": cli, **{f"layout {name}": command for name, command in cli.commands.items()}}
@@ -43,6 +43,12 @@ def invoke(*words):
     return CliRunner().invoke(cli, [str(word) for word in words])
 
 
+def only_numbers(folder, result, audit):
+    """What the writer puts into the folder, less everything that is drawn."""
+    writer._write(folder / "ranking.json", ranking_json(result))
+    writer._write_audit(folder / "audit.npz", result)
+
+
 @pytest.fixture(scope="module")
 def runs(tmp_path_factory):
     """A function that designs one of BRIEFS once, with its audit, and returns (output folder, what was printed)."""
@@ -54,8 +60,9 @@ def runs(tmp_path_factory):
             (folder / "study.toml").write_text(BRIEFS[name])
             with pytest.MonkeyPatch.context() as patch:
                 if name != "drawn":  # drawing takes longer than all the rest, and one drawn run will do
-                    patch.setattr(writer, "scalp_pictures", lambda result: (Picture(b"", b""),) * len(result.layouts))
-                answer = invoke("design", folder / "study.toml", "--out", folder / "out", "--audit")
+                    patch.setattr(writer, "_fill", only_numbers)
+                quick = [] if name == "drawn" else ["--quick"]
+                answer = invoke("design", folder / "study.toml", "--out", folder / "out", "--audit", *quick)
             assert answer.exit_code == 0, answer.output
             done[name] = (folder / "out", answer)
         return done[name]
@@ -119,7 +126,7 @@ def test_python_dash_m_runs_the_same_command():
 
 
 def with_design_that(monkeypatch, problem):
-    def fail(brief, progress):
+    def fail(brief, progress, **options):
         raise problem
 
     monkeypatch.setattr(design, "design", fail)
@@ -147,7 +154,7 @@ def test_ctrl_c_stops_without_debris(here, monkeypatch):
 
 
 def test_ctrl_c_that_a_library_swallows_stops_all_the_same(here, monkeypatch):
-    def swallow(brief, progress):
+    def swallow(brief, progress, **options):
         with contextlib.suppress(BaseException):
             signal.raise_signal(signal.SIGINT)
         progress("the next step")
@@ -157,6 +164,17 @@ def test_ctrl_c_that_a_library_swallows_stops_all_the_same(here, monkeypatch):
     answer = invoke("design", "study.toml")
     assert (answer.exit_code, answer.output) == (130, "Stopped.\n")
     assert signal.getsignal(signal.SIGINT) is signal.default_int_handler
+
+
+def test_what_a_swallowed_ctrl_c_leads_to_is_no_defect(here, monkeypatch):
+    def swallow(brief, progress, **options):
+        with contextlib.suppress(BaseException):
+            signal.raise_signal(signal.SIGINT)
+        raise IndexError("half-done work of a library")
+
+    monkeypatch.setattr(design, "design", swallow)
+    answer = invoke("design", "study.toml")
+    assert (answer.exit_code, answer.output) == (130, "Stopped.\n")
 
 
 @pytest.mark.parametrize("problem", [ArithmeticError("passed its bound"), RuntimeError("a defect")])
@@ -234,13 +252,13 @@ def test_design_prints_the_tables_and_writes_the_folder(runs):
     assert (out / "report.html").is_file()
     for rank in (1, 2):
         layout = out / f"layout-{rank}"
-        assert {path.name for path in layout.iterdir()} == {
+        assert {path.name for path in layout.iterdir()} >= {
             "sensors.csv",
-            "scalp.png",
-            "scalp.svg",
-            "sub-plan_electrodes.tsv",
-            "sub-plan_electrodes.json",
-            "sub-plan_coordsystem.json",
+            *(f"{name}.{ending}" for name in ("scalp", "cortex", "noise") for ending in ("png", "svg", "pdf")),
+            "eeg-sidecar-template.json",
+            "magnetometers.tsv",
+            "magnetometers.json",
+            "bids",
         }
 
 

@@ -15,10 +15,9 @@ from layout.design.curve import CLOCK, everything
 from layout.design.found import Found, find_layouts
 from layout.design.given_layouts import WITHIN, GivenLayout, given_layout, rules_or_none, unpaired, with_own_axes
 from layout.design.objective import Objective, build_objective
-from layout.design.pipeline import build_problems
-from layout.design.problem import build_problem
+from layout.design.problem import build_problem, build_problems
 from layout.design.scenarios import Scenario, scenarios
-from layout.design.study import Progress, Study, lay_out_study, silent
+from layout.design.study import Progress, Study, as_part, lay_out_study, silent
 from layout.design.turned import all_normal, has_free_axes
 from layout.errors import BriefError
 from layout.evidence.baselines import evenly, first_at_site, standard_subset
@@ -62,7 +61,10 @@ def assess(
     objective = build_objective(study, build_problems(study, progress))
     known: dict[tuple[int, ...], Found | None] = {}
     with threadpool_limits(limits=1, user_api="blas"):  # small factorisations: threads cost more than they give
-        assessed = tuple(_assessed(study, objective, one, known, progress) for one in given)
+        assessed = tuple(
+            _assessed(study, objective, one, known, as_part(progress, f"layout {number} of {len(given)}"))
+            for number, one in enumerate(given, 1)
+        )
         progress("dense caps")
         tops = _ceilings(study, objective)
         models = _models(study, objective, given, known, progress) if other_models else ()
@@ -191,10 +193,11 @@ def _models(
     first = objective.problems[0]
     asked = scenarios(replace(study, brief=replace(study.brief, scenarios=asked_models(study.brief))))
     goals, designs = [], []
-    for scenario in asked:
-        progress(f"under {scenario.name}")
+    for number, scenario in enumerate(asked, 1):
+        progress_there = as_part(progress, f"model {number} of {len(asked)}")
+        progress_there(f"under {scenario.name}")
         goals.append(_objective_under(within, scenario, first.calibration))
-        designs.append(find_layouts(within, goals[-1], progress).layouts[0])
+        designs.append(find_layouts(within, goals[-1], progress_there).layouts[0])
     listed |= {f"designed for {one.name}": best.chosen for one, best in zip(asked, designs, strict=True)}
     # The same layout under two names would count twice among the pairs.
     alike = {tuple(sorted(chosen)): number for number, chosen in reversed(list(enumerate(listed.values())))}

@@ -31,6 +31,11 @@ def silent(doing: str) -> None:
     """Progress that says nothing."""
 
 
+def as_part(progress: Progress, part: str) -> Progress:
+    """The same, with the part that it belongs to before what is being done."""
+    return lambda doing: progress(f"{part}: {doing}")
+
+
 @dataclass(frozen=True)
 class Study:
     """The head of a brief with its standard positions, candidates, regions, cortex in its physical model, and rules.

@@ -96,7 +96,8 @@ def prove_axes(
         search.offer(tangent.atoms)
         limit, cut = min(-node.key, tangent.limit), search.cut(tolerance)
         if nodes % 20 == 0:
-            progress(f"proof: {nodes} parts, gap {100 * (limit - search.best.value) / limit:.2f} %")
+            gap = 100 * (limit - search.best.value) / limit
+            progress(f"proof: {nodes} of at most {node_limit} parts, gap {gap:.2f} %")
         forced, closed, given_up = _fixed(rules, tangent, cut)
         dropped = max(dropped, given_up)
         if limit <= cut:

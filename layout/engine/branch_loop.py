@@ -132,7 +132,8 @@ def close(
                 if found_value > best_value:
                     best, best_value = found, found_value
                 top = max(-heap[0][0] if heap else dropped, best_value)
-                progress(f"proof: {nodes} parts, gap {100 * (top - best_value) / max(abs(top), 1e-12):.2f} %")
+                gap = 100 * (top - best_value) / max(abs(top), 1e-12)
+                progress(f"proof: {nodes} of at most {node_limit} parts, gap {gap:.2f} %")
     open_limit = -heap[0][0] if heap else -np.inf
     bound = max(open_limit, dropped, best_value)
     left = len(heap) if open_limit > best_value + tolerance * abs(best_value) else 0

@@ -75,16 +75,17 @@ def print_check(check: Check, console: Console) -> None:
         f"Head: {check.head.name}, length {size[0]} mm, breadth {size[1]} mm, circumference {size[2]} mm, "
         f"{len(check.head.cortex)} sources over {check.head.cortex.areas.sum() / CM2:.0f} cm² of cortex",
     )
-    say(console, _model_text(check))
+    say(console, model_text(check))
     console.print(_regions(check))
     console.print(_stock(check))
-    for line in _rules(check):
+    for line in rule_sentences(check):
         say(console, line)
     print_figures(check.figures_of_noise, console)
     print_notes({"Sites": check.candidates.notes, "Head and model": check.head.notes}, console)
 
 
-def _model_text(check: Check) -> str:
+def model_text(check: Check) -> str:
+    """The physical model in one sentence without its full stop."""
     if isinstance(check.model, BoundaryCortex):
         return f"Physical model: {check.model.note()}; {check.displacements.summary()}"
     sphere = check.model.sphere
@@ -107,22 +108,33 @@ def _regions(check: Check) -> Table:
     for heading in ("sources", "cm²", "centre, mm", "depth, mm"):
         table.add_column(heading, justify="right", no_wrap=True)
     table.add_column("nearest position", overflow="fold")
-    labels = [name for name in check.standard if name not in ("A1", "A2")]
-    tree = cKDTree(np.array([check.standard[name] for name in labels]))
-    for region in check.regions:
-        points = check.head.cortex.positions[region.members]
-        away, nearest = tree.query(np.average(points, axis=0, weights=region.areas))
+    for region, (depth, nearest, away) in zip(check.regions, region_places(check), strict=True):
         table.add_row(
             Text(one_line(region.name)),
             str(len(region.members)),
             fixed(region.areas.sum() / CM2, 1),
             ", ".join(fixed(value / MM, 0) for value in region.centre),
-            fixed(nearest_on_surface(check.head.scalp, points).inside_depth.min() / MM, 1),
-            f"{labels[nearest]}, {away / MM:.0f} mm off",
+            fixed(depth / MM, 1),
+            f"{nearest}, {away / MM:.0f} mm off",
         )
     table.caption = "depth: nearest source under the scalp; nearest position: to the middle of the region's sources"
     table.caption_justify = "left"
     return table
+
+
+def region_places(check: Check) -> list[tuple[float, str, float]]:
+    """Of each region: its nearest source under the scalp [m], the standard position nearest to the middle of its
+    sources, and that one's distance [m] from there.
+    """
+    labels = [name for name in check.standard if name not in ("A1", "A2")]
+    tree = cKDTree(np.array([check.standard[name] for name in labels]))
+    places = []
+    for region in check.regions:
+        points = check.head.cortex.positions[region.members]
+        away, nearest = tree.query(np.average(points, axis=0, weights=region.areas))
+        depth = nearest_on_surface(check.head.scalp, points).inside_depth.min()
+        places.append((float(depth), labels[nearest], float(away)))
+    return places
 
 
 def _stock(check: Check) -> Table:
@@ -135,7 +147,7 @@ def _stock(check: Check) -> Table:
     table.add_column("neighbour, mm", justify="right", no_wrap=True)
     candidates = check.candidates
     for index, entry in enumerate(check.brief.stock):
-        sites = _sites_of(candidates, index)
+        sites = sites_of(candidates, index)
         own = candidates.kind == index
         table.add_row(
             Text(f"{one_line(entry.name)} ({entry.kind})"),
@@ -150,7 +162,7 @@ def _stock(check: Check) -> Table:
     return table
 
 
-def _sites_of(candidates: Candidates, entry: int) -> np.ndarray:
+def sites_of(candidates: Candidates, entry: int) -> np.ndarray:
     """Rows of the sites that an entry may use, both sides of left-right pairs among them."""
     return np.unique(candidates.singles.site[candidates.single_sensors(np.flatnonzero(candidates.kind == entry))])
 
@@ -162,7 +174,8 @@ def _neighbours(points: np.ndarray) -> str:
     return f"{distance.min():.1f}, {np.median(distance):.1f}, {distance.max():.1f}"
 
 
-def _rules(check: Check) -> list[str]:
+def rule_sentences(check: Check) -> list[str]:
+    """The brief's rules on layouts, one sentence each."""
     names, site = check.candidates.names, check.candidates.site
     first, second = np.nonzero(np.triu(check.conflicts))
     apart = site[first] != site[second]
@@ -210,7 +223,7 @@ def check_picture(check: Check) -> Picture:
 
     entries = check.brief.stock
     subtitle = "; ".join(
-        f"{entry.count} of {len(_sites_of(check.candidates, index))} sites for {shortened(entry.name, 30)}"
+        f"{entry.count} of {len(sites_of(check.candidates, index))} sites for {shortened(entry.name, 30)}"
         for index, entry in enumerate(entries)
     )
     with matplotlib.rc_context(STYLE):
@@ -225,7 +238,7 @@ def draw_sites(axes: Axes, check: Check, view: View, backdrop: Backdrop) -> Axes
     near = ~behind(flat, backdrop)
     for index in range(len(check.brief.stock)):
         own = np.zeros(len(sites), dtype=bool)
-        own[_sites_of(check.candidates, index)] = True
+        own[sites_of(check.candidates, index)] = True
         axes.scatter(*flat[own & near, :2].T, zorder=4, **_mark(index))
     kept = np.unique(check.candidates.site[list(check.kept)]) if check.kept else np.zeros(0, dtype=int)
     kept = kept[near[kept]]
