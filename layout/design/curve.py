@@ -13,9 +13,9 @@ from threadpoolctl import threadpool_limits
 from layout import __version__
 from layout.anatomy.positions import FAMILIES, family_names
 from layout.brief.objects import Brief
-from layout.design.found import find_layouts
+from layout.design.found import Found, find_layouts
 from layout.design.objective import Objective, build_objective
-from layout.design.pipeline import build_problems
+from layout.design.problem import build_problems
 from layout.design.study import Progress, Study, lay_out_study, silent
 from layout.design.turned import has_free_axes
 from layout.engine.combined_loss import AnyOneLost
@@ -87,7 +87,31 @@ def curve(
     """
     if amounts.by == "budget" and brief.budget is None:
         raise BriefError("--budgets: must be left out where the brief has no [budget], but it was given")
-    run = _Run(brief, amounts, nested, progress)
+    asked = _of_one_rank(brief)
+    study = lay_out_study(asked, progress)
+    run = _Run(study, amounts, nested, progress)  # an impossible amount is told before the lead fields
+    run.judged_by(build_objective(study, build_problems(study, progress)))
+    return _traced(run, amounts, known, keep)
+
+
+def curve_of(study: Study, objective: Objective, amounts: Amounts, found: Found, progress: Progress = silent) -> Curve:
+    """The curve of a study for which `found` was found; that serves as its own point where it spends as much."""
+    study = replace(study, brief=_of_one_rank(study.brief))
+    run = _Run(study, amounts, False, progress)
+    run.judged_by(objective)
+    own = run.own_point(found)
+    return _traced(run, amounts, lambda spent: own if own is not None and own.spent == spent else None, lambda _: None)
+
+
+def _of_one_rank(brief: Brief) -> Brief:
+    """The brief without what a curve does not ask for."""
+    search = replace(brief.search, ranked=1, polish=False, proof_ranks=1)
+    return replace(brief, search=search, goal=replace(brief.goal, reach_bits=None, reach_error=None))
+
+
+def _traced(
+    run: _Run, amounts: Amounts, known: Callable[[float], CurvePoint | None], keep: Callable[[CurvePoint], None]
+) -> Curve:
     points: list[CurvePoint] = []
     with threadpool_limits(limits=1, user_api="blas"):  # small factorisations: threads cost more than they give
         for number, spent in enumerate(amounts.values, 1):
@@ -97,31 +121,44 @@ def curve(
                 point = run.point(spent, points[-1] if points else None)
                 keep(point)
             points.append(point)
-        if not nested and not run.turned:
+        if not run.nested and not run.turned:
             run.saying("looking back from the larger layouts")
             points = run.looked_back(points)
         return run.curve(points)
 
 
 class _Run:
-    """One curve under way; the head and its lead fields are built when first needed."""
+    """One curve under way, over the rules of a study."""
 
-    def __init__(self, brief: Brief, amounts: Amounts, nested: bool, progress: Progress) -> None:
-        search = replace(brief.search, ranked=1, polish=False, proof_ranks=1)
-        goal = replace(brief.goal, reach_bits=None, reach_error=None)
-        self._brief, self._amounts, self._nested = replace(brief, search=search, goal=goal), amounts, nested
+    def __init__(self, study: Study, amounts: Amounts, nested: bool, progress: Progress) -> None:
+        self._brief, self._study, self._amounts, self.nested = study.brief, study, amounts, nested
         self._progress, self._doing = progress, ""
-        self._study: Study = lay_out_study(self._brief, progress)
-        self.turned = has_free_axes(self._study.candidates)
+        self.turned = has_free_axes(study.candidates)
         if self.turned and nested:
             raise BriefError('--nested: must be left out where stock.axes is "free" or "free_two", but it was given')
-        self._rules = {spent: self._allowed(spent) for spent in amounts.values}  # an impossible amount is told at once
-        self._objective: Objective = build_objective(self._study, build_problems(self._study, progress))
+        self._rules = {spent: self._allowed(spent) for spent in amounts.values}
         self._spreads: dict[int, float] = {}
         self._families = tuple(
-            (family, np.array([self._study.standard[n] for n in family_names(family) if n in self._study.standard]))
+            (family, np.array([study.standard[n] for n in family_names(family) if n in study.standard]))
             for family in FAMILIES
         )
+
+    def judged_by(self, objective: Objective) -> None:
+        """Take the objective of the study."""
+        self._objective = objective
+
+    def own_point(self, found: Found) -> CurvePoint | None:
+        """The point of a layout found for the study as it is; None where it spends as much as no point of the curve."""
+        best, (at, own) = found.layouts[0], found.at[0]
+        if self._amounts.by == "budget":
+            spent = self._brief.budget.total
+        elif len(self._brief.stock) == 1:
+            spent = float(self._study.candidates.sensors[best.chosen].sum())
+        else:
+            return None  # with several kinds in stock a curve leaves their mix free
+        if spent not in self._rules:
+            return None
+        return self._described(spent, best.chosen, best.bound, at, own, found.plain, found.stopped_by_clock)
 
     def saying(self, doing: str) -> None:
         self._doing = doing
@@ -135,20 +172,20 @@ class _Run:
     def point(self, spent: float, before: CurvePoint | None) -> CurvePoint:
         rules, objective = self._rules[spent], self._objective
         study = replace(self._study, feasible=rules)
-        if self._nested and before is not None:
+        if self.nested and before is not None:
             search = replace(self._brief.search, starts=min(NESTED_STARTS, self._brief.search.starts))
             study = replace(study, brief=replace(study.brief, search=search))
         found = find_layouts(study, objective, lambda doing: self._progress(f"{self._doing}: {doing}"))
         best, (at, own) = found.layouts[0], found.at[0]
         layout = Grown(best.chosen, best.value)
         if before is not None and not self.turned:
-            warm = grown(objective.goal, rules, np.array(before.chosen), nested=self._nested)
-            if self._nested and warm is None:
+            warm = grown(objective.goal, rules, np.array(before.chosen), nested=self.nested)
+            if self.nested and warm is None:
                 raise BriefError(
                     f"--nested: must be left out where a smaller layout leaves no room, but no layout for {spent:g} "
                     f"contains the one for {before.spent:g}"
                 )
-            layout = warm if self._nested else better(layout, warm)
+            layout = warm if self.nested else better(layout, warm)
         return self._described(spent, layout.chosen, best.bound, at, own, found.plain, found.stopped_by_clock)
 
     def looked_back(self, points: list[CurvePoint]) -> list[CurvePoint]:
@@ -223,7 +260,7 @@ class _Run:
             title=self._brief.title,
             unit=objective.unit,
             by=self._amounts.by,
-            nested=self._nested,
+            nested=self.nested,
             points=tuple(points),
             ceiling=float(objective.printed(everything(objective, len(candidates)))),
             ceiling_channels=len(candidates.candidate_of_channel),

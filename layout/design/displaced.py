@@ -8,6 +8,7 @@ import numpy as np
 from scipy.spatial.transform import Rotation
 
 from layout.anatomy.scalp_points import normals_at, project
+from layout.brief.objects_stock import HOUSED
 from layout.design.objective import Objective, build_objective
 from layout.design.problem import Problem, build_problem
 from layout.design.scenarios import Scenario, scenarios
@@ -170,7 +171,8 @@ def _noise_factors(study: Study, problem: Problem) -> np.ndarray:
     plain = sensor_noise(study.head, brief, study.candidates, study.standard)
     scenario = problem.scenario
     plain *= scenario.noise_factor * scenario.sensor_factor / np.sqrt(study.brief.noise.averages)
-    if len(problem.sensor_sd) != len(plain):
+    housed = [entry for entry in study.brief.stock if entry.kind in HOUSED]
+    if any(entry.free_axes and (entry.gain_error > 0 or entry.crosstalk > 0) for entry in housed):
         raise BriefError(
             'stock.gain_error and stock.crosstalk: must be left out where stock.axes is "free" or "free_two" and '
             "placement is asked for, but one was given"

@@ -10,12 +10,12 @@ from layout import __version__
 from layout.anatomy.positions import FAMILIES, family_names
 from layout.brief.objects import Brief
 from layout.design.describe import described, numbers
+from layout.design.evidence import gather_evidence
 from layout.design.found import Found, find_layouts, parts_of
 from layout.design.notes import notes_of
 from layout.design.objective import Objective, build_objective
 from layout.design.polish import polish
-from layout.design.problem import Problem, build_problem
-from layout.design.scenarios import scenarios
+from layout.design.problem import build_problems
 from layout.design.study import Progress, Study, lay_out_study, silent
 from layout.engine.bound import tighten
 from layout.engine.ranking import PROVEN_PERCENT
@@ -27,8 +27,11 @@ from layout.outputs.result import Baseline, DesignResult, RankedLayout, Reach
 from layout.units import MM
 
 
-def design(brief: Brief, progress: Progress = silent) -> DesignResult:
-    """Ranked layouts with their bounds, baselines and everything the outputs show."""
+def design(brief: Brief, progress: Progress = silent, evidence: bool = False) -> DesignResult:
+    """Ranked layouts with their bounds, baselines and everything the outputs show.
+
+    evidence: whether to examine each layout's placement, sensitivity and noise as well, and to trace the channel curve.
+    """
     study = lay_out_study(brief, progress)
     problems = build_problems(study, progress)
     objective = build_objective(study, problems)
@@ -45,12 +48,13 @@ def design(brief: Brief, progress: Progress = silent) -> DesignResult:
         )
     if objective.breaks_limits(best.chosen):
         raise _limits_unmet(brief, study, objective, best.chosen)
+    layouts = _layouts(found, progress)
     return DesignResult(
         brief=brief,
         version=__version__,
         goal=brief.goal.kind,
         unit=objective.unit,
-        layouts=_layouts(found, progress),
+        layouts=layouts,
         baselines=_baselines(found, progress),
         bound=objective.printed(best.bound),
         root_bound=objective.printed(found.root_bound),
@@ -67,6 +71,7 @@ def design(brief: Brief, progress: Progress = silent) -> DesignResult:
         proven_within=PROVEN_PERCENT,
         reach=reach,
         polished=polish(study, objective, best.chosen, best.value, progress) if brief.search.polish else None,
+        evidence=gather_evidence(study, objective, found, layouts, progress) if evidence else None,
     )
 
 
@@ -105,23 +110,6 @@ def _of_count(study: Study, count: int) -> Study:
     """The study with exactly so many sensors of its one stock entry."""
     rules = replace(study.feasible, counts=np.array([count]), least=np.array([count]))
     return replace(study, feasible=rules)
-
-
-def build_problems(study: Study, progress: Progress) -> tuple[Problem, ...]:
-    """The rows of every scenario, the brief's own first; strengths are fixed there and hold in all."""
-    own, *others = scenarios(study)
-    first = build_problem(study, progress, own)
-    problems = [first]
-    for number, scenario in enumerate(others, 2):
-        problems.append(
-            build_problem(
-                study,
-                lambda doing, number=number: progress(f"scenario {number} of {len(others) + 1}: {doing}"),
-                scenario,
-                first.calibration,
-            )
-        )
-    return tuple(problems)
 
 
 def _layouts(found: Found, progress: Progress) -> tuple[RankedLayout, ...]:

@@ -14,7 +14,7 @@ from layout.anatomy.regions import region_strengths
 from layout.anatomy.scalp_points import normals_at, project
 from layout.brief.default_heads import DEFAULT_CONDUCTIVITIES
 from layout.design.hypotheses import localisation_model
-from layout.design.scenarios import Scenario, own_scenario
+from layout.design.scenarios import Scenario, own_scenario, scenarios
 from layout.design.study import Progress, Study, silent
 from layout.engine.localisation import LocalisationModel
 from layout.engine.model import LinearModel
@@ -31,13 +31,15 @@ from layout.physics.sphere_model import Displacements
 class Problem:
     """The study under one scenario as the engine's linear model, and what was assumed on the way.
 
-    target_columns: region name -> its columns of model.target. sensor_sd (n_channels,) [V or T]: what the rows were
-    divided by. localisation: the rows of the linearised errors, None where the brief does not ask for them.
+    target_columns: region name -> its columns of model.target; nuisance_columns: what it is -> its columns of
+    model.nuisance. localisation: the rows of the linearised errors, None where the brief does not ask for them.
+    sensor_sd (n_channels,) [V or T]: what the rows were divided by.
     """
 
     scenario: Scenario
     model: LinearModel
     target_columns: dict[str, slice]
+    nuisance_columns: dict[str, slice]
     localisation: LocalisationModel | None
     sensor_sd: np.ndarray
     calibration: Calibration
@@ -110,11 +112,29 @@ def build_problem(
         scenario,
         model,
         columns,
+        noise.parts,
         errors,
         noise.sensor_sd,
         calibration,
         scenario.channels.displacements(scenario.cortex),
     )
+
+
+def build_problems(study: Study, progress: Progress) -> tuple[Problem, ...]:
+    """The rows of every scenario, the brief's own first; strengths are fixed there and hold in all."""
+    own, *others = scenarios(study)
+    first = build_problem(study, progress, own)
+    problems = [first]
+    for number, scenario in enumerate(others, 2):
+        problems.append(
+            build_problem(
+                study,
+                lambda doing, number=number: progress(f"scenario {number} of {len(others) + 1}: {doing}"),
+                scenario,
+                first.calibration,
+            )
+        )
+    return tuple(problems)
 
 
 def _scaled(noise: NoiseModel, scenario: Scenario) -> NoiseModel:

@@ -11,7 +11,7 @@ from layout.anatomy.positions import standard_positions
 from layout.anatomy.regions import select_region
 from layout.anatomy.scalp_points import normals_at, project
 from layout.brief.head_sizes import NAMED_SIZES
-from layout.brief.objects import ScenariosBrief
+from layout.brief.objects import HeadBrief, ScenariosBrief
 from layout.brief.objects_head import HeadSizeBrief
 from layout.design.study import Study, cortex_model
 from layout.physics.channels import Channels, CortexModel, candidate_channels
@@ -75,6 +75,11 @@ def _on_head(study: Study, name: str) -> Scenario:
     """The template scaled to a size of the survey, with the same candidates on it."""
     length, breadth = NAMED_SIZES[name]
     brief = replace(study.brief.head, size=HeadSizeBrief(length=length, breadth=breadth, name=name))
+    return on_head(study, brief, f"head of the {name}")
+
+
+def on_head(study: Study, brief: HeadBrief, name: str) -> Scenario:
+    """Another head with the same candidates on it."""
     head = build_head(brief)
     standard = standard_positions(head.scalp, head.landmarks)
     there = replace(
@@ -86,7 +91,7 @@ def _on_head(study: Study, name: str) -> Scenario:
         regions=tuple(select_region(head, region) for region in study.brief.regions),
         cortex=cortex_model(brief, head),
     )
-    return Scenario(f"head of the {name}", there, candidate_channels(there.candidates), there.cortex)
+    return Scenario(name, there, candidate_channels(there.candidates), there.cortex)
 
 
 def misplaced(study: Study, channels: Channels, shift: float, tilt: float, rng: np.random.Generator) -> Channels:

@@ -102,7 +102,7 @@ def fixed_at(study: Study, objective: Objective, layout: TurnedLayout) -> tuple[
         tilt_limit=None,
     )
     at = replace(study, candidates=turned)
-    return at, build_objective(at, (replace(problem, model=model),))
+    return at, build_objective(at, (replace(problem, model=model, sensor_sd=problem.sensor_sd[first]),))
 
 
 def all_normal(study: Study, objective: Objective) -> tuple[Study, Objective]:
@@ -123,4 +123,5 @@ def all_normal(study: Study, objective: Objective) -> tuple[Study, Objective]:
         offset=model.offset[keep],
         candidate_of_channel=model.candidate_of_channel[keep],
     )
-    return at, build_objective(at, (replace(objective.problems[0], model=normal),))
+    problem = objective.problems[0]
+    return at, build_objective(at, (replace(problem, model=normal, sensor_sd=problem.sensor_sd[keep]),))

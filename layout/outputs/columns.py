@@ -4,6 +4,10 @@ from __future__ import annotations
 
 import json
 
+from layout.outputs.helmet_columns import CLASHES, POSES
+from layout.outputs.placement_tables import LOSSES, PLACEMENT, SUBSTITUTES
+from layout.outputs.sheet_table import SHEET
+
 FRAME = "head frame: origin halfway between LPA and RPA, x towards RPA, y to the front, z up"
 
 SENSORS = {
@@ -91,7 +95,17 @@ GOALS = {
 def columns_json(unit: str) -> str:
     """File name -> column -> Description and, where it has one, Units, for a goal in bits or mm."""
     words = GOALS[unit]
-    content = {"ranking.csv": RANKING, "layout-*/sensors.csv": SENSORS, "polished.csv": POLISHED}
+    content = {
+        "ranking.csv": RANKING,
+        "layout-*/sensors.csv": SENSORS,
+        "layout-*/placement.csv": PLACEMENT,
+        "layout-*/substitutes.csv": SUBSTITUTES,
+        "layout-*/expected_loss.csv": LOSSES,
+        "layout-*/sheet.csv": SHEET,
+        "layout-*/helmet-poses.csv": POSES,
+        "layout-*/clashes.csv": CLASHES,
+        "polished.csv": POLISHED,
+    }
     defined = {
         file: {
             name.format(**words): {"Description": text.format(**words)}

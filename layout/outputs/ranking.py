@@ -5,7 +5,9 @@ from __future__ import annotations
 import json
 from typing import Any
 
+from layout.noise.calibration import Figure
 from layout.outputs.cautions import CAUTIONS
+from layout.outputs.evidence_json import evidence_content
 from layout.outputs.plain import for_json
 from layout.outputs.result import SCHEMA, Baseline, DesignResult, RankedLayout, SensorRow
 from layout.units import MM, NAM
@@ -62,26 +64,32 @@ def ranking_json(result: DesignResult) -> str:
         ],
         "layouts": [_layout(layout) for layout in result.layouts],
         "baselines": [_baseline(result, base) for base in result.baselines],
-        "noise_figures": [
-            {
-                "name": name,
-                "value": figure.value,
-                "unit": figure.unit,
-                "low": figure.low,
-                "high": figure.high,
-                "outside": figure.outside,
-                "judged": figure.judged,
-                "band": figure.band,
-                "source": figure.source,
-                "remark": figure.remark,
-            }
-            for name, figure in result.figures_of_noise.items()
-        ],
+        "evidence": evidence_content(result.evidence, tuple(region.members for region in result.regions)),
+        "noise_figures": noise_figures(result.figures_of_noise),
         "search_effort": result.search_effort,
         "notes": result.notes,
         "cautions": CAUTIONS,
     }
     return json.dumps(for_json(content), indent=1, ensure_ascii=False, allow_nan=False) + "\n"
+
+
+def noise_figures(figures: dict[str, Figure]) -> list[dict[str, Any]]:
+    """Figures of noise with their bands, in their own units."""
+    return [
+        {
+            "name": name,
+            "value": figure.value,
+            "unit": figure.unit,
+            "low": figure.low,
+            "high": figure.high,
+            "outside": figure.outside,
+            "judged": figure.judged,
+            "band": figure.band,
+            "source": figure.source,
+            "remark": figure.remark,
+        }
+        for name, figure in figures.items()
+    ]
 
 
 def _layout(layout: RankedLayout) -> dict[str, Any]:

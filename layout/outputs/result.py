@@ -10,6 +10,7 @@ import numpy as np
 from layout.anatomy.head import Head, Region
 from layout.brief.objects import Brief
 from layout.noise.calibration import Figure
+from layout.outputs.evidence_result import Evidence
 from layout.sensing.candidates import Candidates
 
 SCHEMA = 1  # of ranking.json
@@ -147,7 +148,7 @@ class DesignResult:
     in words. figures_of_noise: label -> figure beside its band. search_effort: label -> count, nothing that
     depends on the clock. notes: heading -> assumptions and weaknesses, one sentence each. audit: arrays of
     audit.npz by name. reach: what was found where the fewest sensors were asked for.
-    polished: layout 1 slid off the grid, where that was asked for.
+    polished: layout 1 slid off the grid, where that was asked for. evidence: None where it was not asked for.
     """
 
     brief: Brief
@@ -171,3 +172,4 @@ class DesignResult:
     proven_within: float = 0.1
     reach: Reach | None = None
     polished: Polished | None = None
+    evidence: Evidence | None = None

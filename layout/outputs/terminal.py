@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING
 
+from layout.outputs.evidence_words import evidence_sentences
 from layout.outputs.plain import bound_text, fixed, one_line, rounded_up, significant
 from layout.outputs.result import DesignResult, RankedLayout
 from layout.outputs.words import (
@@ -50,6 +51,8 @@ def print_result(result: DesignResult, console: Console) -> None:
         console,
         f"nearest position: standard position, distance; {result.unit} lost: what layout 1 loses without this sensor",
     )
+    for sentence in evidence_sentences(result):
+        say(console, sentence)
     if result.figures_of_noise:
         print_figures(result.figures_of_noise, console)
     print_notes(result.notes, console)
