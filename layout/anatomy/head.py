@@ -35,6 +35,10 @@ class Surface:
             np.add.at(normals, self.faces[:, corner], face_normals)
         return normals / np.linalg.norm(normals, axis=1, keepdims=True)
 
+    def __getstate__(self) -> dict[str, np.ndarray]:
+        """Vertices and faces alone: the search tree of the cached mesh does not outlive a process."""
+        return {"vertices": self.vertices, "faces": self.faces}
+
 
 @dataclass(frozen=True)
 class Landmarks:
