@@ -53,7 +53,9 @@ def tangents_at(normals: np.ndarray) -> np.ndarray:
     first = np.array([0.0, 1.0, 0.0]) - normals[:, 1:2] * normals
     length = np.linalg.norm(first, axis=1)
     degenerate = length < 1e-6
-    first[degenerate] = np.array([0.0, 0.0, -1.0]) * np.sign(normals[degenerate, 1:2])
+    along = normals[degenerate]
+    down = np.array([0.0, 0.0, -1.0]) * np.sign(along[:, 1:2])
+    first[degenerate] = down - np.einsum("nd,nd->n", down, along)[:, None] * along
     length[degenerate] = 1.0
     first = first / length[:, None]
     return np.stack([first, np.cross(normals, first)], axis=1)

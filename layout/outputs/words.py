@@ -92,7 +92,7 @@ def housings_sentence(result: DesignResult) -> str:
     if not meeting:
         return ""
     where = ", ".join(f"{one.housings_meet} in layout {one.rank}" for one in meeting)
-    return f"Pairs of housings that meet: {where}; a larger spacing_mm keeps them apart."
+    return f"Pairs of housings that meet: {where}; a larger spacing_mm keeps them apart (clashes.csv lists them)."
 
 
 def figure_text(figure: Figure) -> str:
