@@ -54,8 +54,8 @@ def paint_backdrop(head: Head, regions: tuple[Region, ...], view: View) -> Backd
     frame = (extent, shape)
 
     face, weights, _ = _see(head.cortex.positions, head.cortex.faces, view, frame)
-    normals = _vertex_normals(head.cortex.positions, head.cortex.faces)
-    normal = _blend(view.project(normals), head.cortex.faces, face, weights)
+    normals = vertex_normals(head.cortex.positions, head.cortex.faces)
+    normal = blended(view.project(normals), head.cortex.faces, face, weights)
     light = np.clip(normal @ (LIGHT / np.linalg.norm(LIGHT)), 0, 1)
     image = np.ones((*shape, 3))
     image[face >= 0] = (CORTEX_GREY * (0.72 + 0.28 * light[..., None]))[face >= 0]
@@ -64,19 +64,19 @@ def paint_backdrop(head: Head, regions: tuple[Region, ...], view: View) -> Backd
     for index, region in enumerate(regions):
         members[region.members, index] = 1.0
     for index in range(len(regions)):
-        colour, member = np.array(_rgb(region_colour(index))), members[:, index]
+        colour, member = np.array(rgb(region_colour(index))), members[:, index]
         near = np.any(member[head.cortex.faces] > 0, axis=1)
         behind, behind_weights, _ = _see(head.cortex.positions, head.cortex.faces[near], view, frame)
-        hidden = _blend(member[:, None], head.cortex.faces[near], behind, behind_weights)[..., 0] > 0.5
+        hidden = blended(member[:, None], head.cortex.faces[near], behind, behind_weights)[..., 0] > 0.5
         image[hidden] += HIDDEN_STRENGTH * (colour - image[hidden])
-    seen = _blend(members, head.cortex.faces, face, weights) > 0.5
+    seen = blended(members, head.cortex.faces, face, weights) > 0.5
     for index in range(len(regions)):  # after all hidden ones, which would tint what lies in front of them
         here = seen[..., index]
-        image[here] = (np.array(_rgb(region_colour(index))) * (0.80 + 0.20 * light[..., None]))[here]
+        image[here] = (np.array(rgb(region_colour(index))) * (0.80 + 0.20 * light[..., None]))[here]
 
     face, weights, height = _see(head.scalp.vertices, head.scalp.faces, view, frame)
-    normals = _vertex_normals(head.scalp.vertices, head.scalp.faces)
-    normal = _blend(view.project(normals), head.scalp.faces, face, weights)
+    normals = vertex_normals(head.scalp.vertices, head.scalp.faces)
+    normal = blended(view.project(normals), head.scalp.faces, face, weights)
     inside = (face >= 0).astype(float)
     slant = 1 - np.clip(normal[..., 2], 0, 1)
     veil = (0.07 + 0.38 * slant**2.5) * inside  # a thin shell is denser where looked at along its surface
@@ -92,7 +92,7 @@ def _see(vertices, faces, view, frame):
     return seen_faces(np.stack([columns, rows, flat[:, 2]], axis=1), faces, shape)
 
 
-def _blend(values: np.ndarray, faces: np.ndarray, face: np.ndarray, weights: np.ndarray) -> np.ndarray:
+def blended(values: np.ndarray, faces: np.ndarray, face: np.ndarray, weights: np.ndarray) -> np.ndarray:
     """Vertex values (n_vertices, m) at every pixel (rows, columns, m), 0 where nothing is seen."""
     at_pixels = np.zeros((*face.shape, values.shape[1]))
     hit = face >= 0
@@ -100,7 +100,7 @@ def _blend(values: np.ndarray, faces: np.ndarray, face: np.ndarray, weights: np.
     return at_pixels
 
 
-def _vertex_normals(vertices: np.ndarray, faces: np.ndarray) -> np.ndarray:
+def vertex_normals(vertices: np.ndarray, faces: np.ndarray) -> np.ndarray:
     """Unit normals (n_vertices, 3), zero for vertices that no triangle uses (thinned source meshes have
     them)."""
     corners = vertices[faces]
@@ -112,5 +112,6 @@ def _vertex_normals(vertices: np.ndarray, faces: np.ndarray) -> np.ndarray:
     return np.divide(normals, length, out=np.zeros_like(normals), where=length > 0)
 
 
-def _rgb(colour: str) -> tuple[float, ...]:
+def rgb(colour: str) -> tuple[float, ...]:
+    """Red, green and blue in 0..1 of "#RRGGBB"."""
     return tuple(int(colour[k : k + 2], 16) / 255 for k in (1, 3, 5))

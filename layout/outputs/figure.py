@@ -23,9 +23,11 @@ if TYPE_CHECKING:
     from matplotlib.figure import Figure
 
 DPI = 150
+INSIDE_DPI = 120  # what a painted head has of its own: more would make the files larger and nothing clearer
+TEXT, NUMBER = 14, 10  # pt on a picture of 244 mm: 10.3 and 7.4 on two columns of a journal (180 mm)
 LEGEND_COLUMNS = 2
-DISC_RADIUS = 4.6e-3  # m on the head's own scale
-ARROW = 11.5e-3  # m, an axis lying in the picture's plane
+DISC_RADIUS = 5.6e-3  # m on the head's own scale
+ARROW = 14.5e-3  # m, an axis lying in the picture's plane
 HEAD_ON = 0.87  # cosine beyond which an axis has no arrow worth drawing
 BEHIND = 4e-3  # m: a site this far under the nearest scalp is on the far side
 KIND_COLOURS = ("#0B3C6F", "#1B1B1B", "#5B2A6E", "#5C3A12")
@@ -34,6 +36,7 @@ STYLE = {
     "text.parse_math": False,
     "svg.hashsalt": "layout",
     "svg.fonttype": "path",
+    "pdf.fonttype": 42,  # whole outlines of the letters in use, which journals ask for
     "font.family": "DejaVu Sans",
 }
 
@@ -44,6 +47,7 @@ class Picture:
 
     png: bytes
     svg: bytes
+    pdf: bytes = b""
 
 
 def scalp_pictures(result: DesignResult) -> tuple[Picture, ...]:
@@ -60,12 +64,19 @@ def scalp_picture(result: DesignResult, layout: RankedLayout, backdrops: dict[st
         return rendered(scalp_figure(result, layout, backdrops))
 
 
-def rendered(figure: Figure) -> Picture:
-    """A figure as file contents without time or program in them."""
-    png, svg = io.BytesIO(), io.BytesIO()
-    figure.savefig(png, format="png", dpi=DPI, metadata={"Software": None})
-    figure.savefig(svg, format="svg", dpi=DPI, metadata={"Date": None, "Creator": None})
-    return Picture(png.getvalue(), svg.getvalue())
+def rendered(figure: Figure, dpi: float = DPI, inside_dpi: float = INSIDE_DPI) -> Picture:
+    """A figure as file contents without time or program in them.
+
+    dpi: of the picture as pixels; inside_dpi: of the images inside the others, whose lines and letters are sharp at any
+    size.
+    """
+    png, svg, pdf = io.BytesIO(), io.BytesIO(), io.BytesIO()
+    figure.savefig(png, format="png", dpi=dpi, metadata={"Software": None})
+    figure.savefig(svg, format="svg", dpi=inside_dpi, metadata={"Date": None, "Creator": None})
+    figure.savefig(
+        pdf, format="pdf", dpi=inside_dpi, metadata={"CreationDate": None, "Creator": None, "Producer": None}
+    )
+    return Picture(png.getvalue(), svg.getvalue(), pdf.getvalue())
 
 
 def scalp_figure(result: DesignResult, layout: RankedLayout, backdrops: dict[str, Backdrop] | None = None) -> Figure:
@@ -91,8 +102,8 @@ def four_panels(
     """A figure of four views, each drawn by `draw`, with title, scale bar and legend entries (handle, label)."""
     from matplotlib.figure import Figure
 
-    legend_height = 0.35 + 0.27 * int(np.ceil(len(legend) / LEGEND_COLUMNS))  # inches
-    width, title_height, panel = 9.6, 0.9, 4.7
+    legend_height = 0.35 + 0.31 * int(np.ceil(len(legend) / LEGEND_COLUMNS))  # inches
+    width, title_height, panel = 9.6, 0.95, 4.7
     figure = Figure(figsize=(width, width), facecolor="white")
     panels = [figure.add_axes((0, 0, 1, 1), label=view.name) for view in views]
     for axes, view in zip(panels, views, strict=True):
@@ -107,8 +118,8 @@ def four_panels(
         bottom = legend_height + sum(rows[row:]) - own  # the tops of a row are level
         axes.set_position((left, bottom / height, panel / width, own / height))
     draw_scale_bar(figure.axes[0])
-    figure.text(0.01, 1 - 0.31 / height, shortened(title, 72), size=15, weight="bold", va="center")
-    figure.text(0.01, 1 - 0.68 / height, subtitle, size=12, color="#333333", va="center")
+    figure.text(0.01, 1 - 0.31 / height, shortened(title, 72), size=17, weight="bold", va="center")
+    figure.text(0.01, 1 - 0.70 / height, subtitle, size=TEXT, color="#333333", va="center")
     figure.legend(
         handles=[handle for handle, _ in legend],
         labels=[label for _, label in legend],
@@ -116,7 +127,7 @@ def four_panels(
         bbox_to_anchor=(0.5, 0.06 / height),
         ncols=LEGEND_COLUMNS,
         frameon=False,
-        fontsize=11,
+        fontsize=TEXT,
         handletextpad=0.6,
         columnspacing=2.0,
     )
@@ -160,8 +171,8 @@ def draw_head(axes: Axes, head: Head, view: View, backdrop: Backdrop) -> Axes:
     inset = 5e-3
     for name, (spot_x, spot_y), side in zip(view.ends, _end_spots(view, backdrop.extent), "lrcc", strict=True):
         align = {"l": "left", "r": "right", "c": "center"}[side]
-        axes.text(spot_x, spot_y, name, size=11, color="#4A5160", ha=align, va="center")
-    axes.text(left + 2e-3, top - inset, view.name, size=11.5, weight="bold", color="#333333", ha="left", va="center")
+        axes.text(spot_x, spot_y, name, size=TEXT, color="#4A5160", ha=align, va="center")
+    axes.text(left + 2e-3, top - inset, view.name, size=TEXT, weight="bold", color="#333333", ha="left", va="center")
     return axes
 
 
@@ -222,7 +233,7 @@ def draw_scale_bar(axes: Axes, length: float = 50 * MM) -> Axes:
     bottom, _ = axes.get_ylim()
     start, height = left + 0.02 * (right - left), bottom + 0.035 * (right - left)
     axes.plot([start, start + length], [height, height], color="#333333", linewidth=2.2, solid_capstyle="butt")
-    axes.text(start + length / 2, height + 2e-3, f"{length / MM:.0f} mm", size=11, ha="center", va="bottom")
+    axes.text(start + length / 2, height + 2e-3, f"{length / MM:.0f} mm", size=TEXT, ha="center", va="bottom")
     return axes
 
 
@@ -259,7 +270,7 @@ def _draw_sensor(axes: Axes, colour: str, row: SensorRow, anchor: np.ndarray, pl
     axes.text(
         *place,
         str(row.number),
-        size=7.2,
+        size=NUMBER,
         weight="bold",
         color=ink,
         ha="center",

@@ -1,5 +1,5 @@
-"""Electrode positions from a BIDS `*_electrodes.tsv` (BIDS 1.11): tab separated, first columns name, x, y,
-z.
+"""Electrode positions from a BIDS `*_electrodes.tsv` (BIDS 1.11): tab separated, first columns name, x, y, z; or the
+places on the scalp of a design's magnetometers.tsv.
 """
 
 from __future__ import annotations
@@ -11,6 +11,7 @@ from pathlib import Path
 import numpy as np
 
 from layout.errors import FileError
+from layout.sensing.magnetometers_file import is_magnetometers_header, read_magnetometers
 from layout.units import MM
 
 _SCALES = {"m": 1.0, "cm": 1e-2, "mm": MM}
@@ -19,14 +20,17 @@ _SCALES = {"m": 1.0, "cm": 1e-2, "mm": MM}
 def read_electrodes(path: Path) -> tuple[tuple[str, ...], np.ndarray]:
     """Names and positions (n, 3) [m] in the head frame; rows whose coordinates are n/a are left out.
 
-    Units are millimetres unless the coordinate-system file beside the table says m, cm or mm. Raises
-    FileError for a missing or malformed file, a repeated or empty name, a coordinate that is not a finite
-    number.
+    Of a magnetometers.tsv: the sites and their places on the scalp. Units are millimetres unless the coordinate-system
+    file beside the table says m, cm or mm. Raises FileError for a missing or malformed file, a repeated or empty name,
+    a coordinate that is not a finite number.
     """
     path = Path(path)
     lines = _text(path).splitlines()
     while lines and not lines[-1].strip():
         lines.pop()
+    if lines and is_magnetometers_header(lines[0]):
+        sensors = {one.site: one.scalp_position for one in read_magnetometers(path)}
+        return tuple(sensors), np.array(list(sensors.values()))
     header = lines[0].split("\t") if lines else []
     if header[:4] != ["name", "x", "y", "z"]:
         raise FileError(

@@ -1,4 +1,4 @@
-"""Sensors listed in a table: a BIDS electrodes.tsv, or the sensors.csv of a ranked layout."""
+"""Sensors listed in a table: a BIDS electrodes.tsv, or the sensors.csv or magnetometers.tsv of a ranked layout."""
 
 from __future__ import annotations
 
@@ -10,6 +10,7 @@ import numpy as np
 
 from layout.errors import FileError
 from layout.sensing.electrodes_file import read_electrodes
+from layout.sensing.magnetometers_file import is_magnetometers_header, read_magnetometers
 from layout.units import MM
 
 _COLUMNS = ("number", "name", "kind", "scalp_x_mm", "scalp_y_mm", "scalp_z_mm", "axis")
@@ -36,7 +37,13 @@ def read_layout_table(path: Path) -> list[ListedSensor]:
 
     Raises FileError for a missing or damaged table.
     """
-    if not _is_sensor_table(path):
+    first = _first_line(path)
+    if is_magnetometers_header(first):
+        return [
+            ListedSensor(one.name, one.scalp_position, one.kind, one.axis_name, one.axes)
+            for one in read_magnetometers(path)
+        ]
+    if first.split(",")[0].strip() != "number":
         names, points = read_electrodes(path)
         grounds = _grounds(path)
         return [
@@ -68,10 +75,10 @@ def read_layout_table(path: Path) -> list[ListedSensor]:
     return list(sensors.values())
 
 
-def _is_sensor_table(path: Path) -> bool:
+def _first_line(path: Path) -> str:
     try:
         with path.open(encoding="utf-8-sig", newline="") as file:
-            return file.readline(2000).split(",")[0].strip() == "number"
+            return file.readline(2000)
     except FileNotFoundError:
         raise FileError(f"{path}: must exist, but there is no such file") from None
     except (OSError, UnicodeDecodeError) as problem:

@@ -7,15 +7,8 @@ import re
 import numpy as np
 from references import bids_electrode_rules as rules
 
-from layout.outputs.bids import (
-    COORDSYSTEM_JSON,
-    ELECTRODES_JSON,
-    ELECTRODES_TSV,
-    coordsystem_json,
-    electrodes_json,
-    electrodes_of,
-    electrodes_tsv,
-)
+from layout.outputs.bids import coordsystem_json, electrodes_json, electrodes_of, electrodes_tsv
+from layout.outputs.bids_dataset import COORDSYSTEM_JSON, ELECTRODES_JSON, ELECTRODES_TSV
 
 
 def _lines(layout):
@@ -29,6 +22,7 @@ def test_columns_names_and_missing_values(result):
     head, *rows = _lines(result.layouts[0])
     assert head[:4] == rules.FIRST_COLUMNS
     defined = json.loads(electrodes_json())
+    assert defined.pop("Description")
     assert set(head[4:]) - rules.RECOMMENDED_COLUMNS == set(defined)
     assert all(column["Description"] for column in defined.values())
     assert all(len(row) == len(head) for row in rows)
@@ -37,7 +31,7 @@ def test_columns_names_and_missing_values(result):
     assert len(names) == len(set(names))
     assert all(cell == rules.MISSING for row in rows for cell in row[4:7])
     roles = [row[head.index("role")] for row in rows]
-    assert set(roles) - {rules.MISSING} == set(defined["role"]["Levels"])
+    assert set(roles) - {rules.MISSING} == {"reference"} < set(defined["role"]["Levels"])
     expected = [sensor.role or rules.MISSING for sensor in electrodes_of(result.layouts[0])]
     assert roles == expected
     assert roles.count("reference") == 1
@@ -82,6 +76,6 @@ def test_coordsystem(result):
 
 
 def test_file_names():
-    assert re.fullmatch(rules.ELECTRODES_NAME, ELECTRODES_TSV)
-    assert re.fullmatch(rules.COORDSYSTEM_NAME, COORDSYSTEM_JSON)
+    assert re.fullmatch(rules.ELECTRODES_NAME, ELECTRODES_TSV.rpartition("/")[2])
+    assert re.fullmatch(rules.COORDSYSTEM_NAME, COORDSYSTEM_JSON.rpartition("/")[2])
     assert ELECTRODES_TSV.replace(".tsv", ".json") == ELECTRODES_JSON  # a sidecar has its table's name
