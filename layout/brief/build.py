@@ -26,7 +26,7 @@ def build_brief(form: BriefForm, sha256: str, folder: Path) -> objects.Brief:
     """Everything the form says, with the defaults of `layout.brief.objects` where it says nothing."""
     return objects.Brief(
         title=form.title,
-        head=_head(form.head, folder),
+        head=head_brief(form.head, folder),
         regions=tuple(_region(region, folder) for region in form.regions),
         stock=tuple(_stock(entry, folder) for entry in form.stock),
         places=_places(form.places),
@@ -66,7 +66,8 @@ def _in_si(value: float | tuple | dict, unit: float) -> float | tuple | dict:
     return float(f"{value * unit:.15g}")
 
 
-def _head(form: HeadForm, folder: Path) -> objects.HeadBrief:
+def head_brief(form: HeadForm, folder: Path) -> objects.HeadBrief:
+    """What [head] says."""
     sphere = {}
     if form.kind == "sphere":
         radii, depth = form.radii_mm, form.cortex_depth_mm

@@ -33,13 +33,13 @@ _LONGEST_VALUE = 80
 _ABSENT = object()
 
 
-def first_refusal(error: ValidationError, raw: dict) -> str:
-    """The refusal that comes first in the file, without a full stop; `raw` is the parsed TOML."""
+def first_refusal(error: ValidationError, raw: dict, form: type[Form] = BriefForm) -> str:
+    """The refusal that comes first in the file, without a full stop; `raw` is the parsed TOML of such a form."""
     findings = error.errors(include_url=False)
     placed = sorted(((_path(finding), finding) for finding in findings), key=lambda p: _order(p[0], raw))
     path, finding = placed[0]
     more = f" (and {len(placed) - 1} more)" if len(placed) > 1 else ""
-    return f"{where(path, raw)} {_rule(path, finding, raw)}{more}"
+    return f"{where(path, raw)} {_rule(path, finding, raw, form)}{more}"
 
 
 def where(path: tuple[str | int, ...], raw: dict) -> str:
@@ -118,13 +118,13 @@ def _order(path: tuple[str | int, ...], raw: dict) -> tuple[int, ...]:
     return tuple(order)
 
 
-def _rule(path: tuple[str | int, ...], finding: dict, raw: dict) -> str:
+def _rule(path: tuple[str | int, ...], finding: dict, raw: dict, form: type[Form]) -> str:
     kind, ctx = finding["type"], finding.get("ctx", {})
     value = _value(path, raw)
     if kind.startswith("union_tag"):
         rule = 'must be "electrode", "magnetometer" or "gradiometer"'
     elif kind == "extra_forbidden":
-        rule = f"is not a known key ({_suggestion(path, raw)})"
+        rule = f"is not a known key ({_suggestion(path, raw, form)})"
     elif kind == "literal_error":
         rule = f"must be {ctx['expected']}".replace("'", '"')
     elif kind == "rule":
@@ -148,15 +148,14 @@ def _rule(path: tuple[str | int, ...], finding: dict, raw: dict) -> str:
     return f"{rule}, but it is missing" if value is _ABSENT else f"{rule}, but {shown(value)} was given"
 
 
-def _suggestion(path: tuple[str | int, ...], raw: dict) -> str:
-    known = _known_keys(path[:-1], raw)
+def _suggestion(path: tuple[str | int, ...], raw: dict, form: type[Form]) -> str:
+    known = _known_keys(path[:-1], raw, form)
     near = difflib.get_close_matches(str(path[-1]), known, n=1, cutoff=0.6)
     return f"did you mean {near[0]}" if near else f"known here: {', '.join(known)}"
 
 
-def _known_keys(path: tuple[str | int, ...], raw: dict) -> list[str]:
-    """The keys the table at `path` may have."""
-    form: type[Form] = BriefForm
+def _known_keys(path: tuple[str | int, ...], raw: dict, form: type[Form]) -> list[str]:
+    """The keys the table at `path` of such a form may have."""
     for depth, part in enumerate(path):
         if isinstance(part, str):
             form = _form_for(form.model_fields[part].annotation, _value(path[: depth + 2], raw))
