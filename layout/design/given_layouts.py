@@ -45,7 +45,7 @@ def unpaired(brief: Brief) -> Brief:
 
 
 def given_layout(study: Study, text: str, within: float = WITHIN) -> GivenLayout:
-    """The layout that a path (electrodes.tsv, sensors.csv) or names with commas between stand for.
+    """The layout that a path (electrodes.tsv, magnetometers.tsv, sensors.csv) or names with commas between stand for.
 
     Positions that are no candidate's take the nearest site within `within` [m]; what was moved or chosen for want of a
     statement is noted. Raises BriefError for unknown names, FileError for damaged tables and sensors too far from

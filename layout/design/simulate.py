@@ -14,9 +14,8 @@ from layout.anatomy.positions import FAMILIES, family_names
 from layout.brief.objects import Brief, ExistingBrief
 from layout.design.found import find_layouts
 from layout.design.objective import build_objective
-from layout.design.pipeline import build_problems
-from layout.design.problem import Problem, build_problem
-from layout.design.study import Progress, Study, lay_out_study, silent
+from layout.design.problem import Problem, build_problem, build_problems
+from layout.design.study import Progress, Study, as_part, lay_out_study, silent
 from layout.design.turned import all_normal, has_free_axes
 from layout.engine.localisation import LocalisationModel, linearised_errors
 from layout.errors import BriefError
@@ -33,7 +32,7 @@ from layout.evidence.simulation import (
     marked_crossings,
     plant,
 )
-from layout.evidence.simulation_forward import fields_at, forward_of, held_inside, some_channels, volume_grid
+from layout.evidence.simulation_forward import fields_at, fields_on, forward_of, held_inside, some_channels, volume_grid
 from layout.outputs.simulation_result import ErrorRow, Simulation, SpreadRow, TestedLayout
 from layout.physics.nearest_point import nearest_on_surface
 from layout.sensing.existing import existing_singles
@@ -112,8 +111,9 @@ def simulate(
     trial = _Trial(drawn, priors, factors, grid, _groups(study, drawn))
     layouts, errors, spreads = [], [], []
     fields = _fields(tried, trial, progress)
-    for one, field in zip(tried, fields, strict=True):
-        rows, spread = _try(one, field, trial, np.random.default_rng([seed, NOISE]), progress)
+    for number, (one, field) in enumerate(zip(tried, fields, strict=True), 1):
+        part = as_part(progress, f"layout {number} of {len(tried)}")
+        rows, spread = _try(one, field, trial, np.random.default_rng([seed, NOISE]), part)
         layouts.append(_described(one, rows))
         errors += rows
         spreads += spread
@@ -261,8 +261,8 @@ def _fields(tried: list[_Tried], trial: _Trial, progress: Progress) -> list[_Fie
         rows = [one.problem.model.channels_of(tried[k].chosen) for k in alike]
         channels = some_channels(one.problem.scenario.channels, np.concatenate(rows))
         cortex = one.study.cortex
-        on_cortex = channels.lead_field_at(cortex, one.study.head.cortex.positions, None)
-        on_grid = on_cortex if trial.grid is None else channels.lead_field_at(cortex, trial.grid, None)
+        on_cortex = fields_on(channels, cortex, None)
+        on_grid = on_cortex if trial.grid is None else fields_on(channels, cortex, trial.grid)
         progress(f"lead fields beside the plants: {one.name}")
         of_plants = fields_at(channels, cortex, trial.plants.places, trial.plants.moments)
         first = 0
@@ -290,8 +290,8 @@ def _try(
     drawn = whitener @ noise.draw(len(plants), rng)
     snr = float(np.sqrt(np.mean(signals**2)))
     found = []
-    for factor in trial.noise_factors:
-        progress(f"fitting dipoles: {one.name}, noise x {factor:g}")
+    for number, factor in enumerate(trial.noise_factors, 1):
+        progress(f"fitting dipoles, noise {number} of {len(trial.noise_factors)}: x {factor:g}")
         fits = fits_of_plants(forward, grid, grid_gain, signals + factor * drawn, plants, factor, trial.priors)
         errors = np.linalg.norm(fits.places - plants.places, axis=1)
         on_grid = np.linalg.norm(grid[fits.grid] - plants.places, axis=1)

@@ -15,12 +15,11 @@ from dataclasses import dataclass
 import numpy as np
 from scipy.stats import chi2
 
+from layout.evidence.dipole_steps import CONVERGED, held_steps
 from layout.units import MM
 
 SILENT = 1e-10  # squared singular values below this share of the largest: moments that no channel sees (radial, MEG)
 SOURCES_AT_ONCE = 1024
-LONGEST_STEP = 15 * MM
-CONVERGED = 1e-6 * MM  # a step so short is the last whatever it gains
 NEGLIGIBLE = 1e-4  # of misfit, whose noise has unit variance: steps that gain less are under 0.01 standard errors
 ROUNDS = 20
 LEAST_DAMPING = 1e-8  # with fewer rows than unknowns some step is undetermined
@@ -90,7 +89,7 @@ def fit_dipoles(
         lambda places, moments, gain: forward.slopes(places, moments, gain * noise) / noise,
         forward.hold,
     )
-    places, moments, misfit, rounds = refine(scaled, grid[best], data, priors)
+    places, moments, misfit, rounds = refine(scaled, grid[best], data, priors, grid_gain[:, best])
     usual = chi2.isf(UNUSUAL, max(1, len(data) - (0 if priors else 6)))
     starts = [grid[best]]
     for _ in range(MORE_STARTS):  # from elsewhere where the misfit says that this is a minimum beside the deepest
@@ -99,8 +98,9 @@ def fit_dipoles(
             break
         known = None if priors is None else priors.some(again)
         taken = [places[again], *(one[again] for one in starts)]
-        start = grid[scan(grid, grid_gain, data[:, again], known, taken)]
-        other = refine(scaled, start, data[:, again], known)
+        first = scan(grid, grid_gain, data[:, again], known, taken)
+        start = grid[first]
+        other = refine(scaled, start, data[:, again], known, grid_gain[:, first])
         starts.append(np.full_like(places, np.inf))
         starts[-1][again] = start
         lower = other[2] < misfit[again]
@@ -143,32 +143,38 @@ def scan(
 
 
 def refine(
-    forward: Forward, places: np.ndarray, data: np.ndarray, priors: Priors | None = None
+    forward: Forward,
+    places: np.ndarray,
+    data: np.ndarray,
+    priors: Priors | None = None,
+    gain: np.ndarray | None = None,
 ) -> tuple[np.ndarray, np.ndarray, np.ndarray, int]:
     """(places, moments, misfit, rounds) from the given places (n, 3) [m] downhill, all fits side by side.
 
-    Gauss-Newton with Levenberg's and Marquardt's damping for each fit, on the place alone: the moment follows.
+    Gauss-Newton with Levenberg's and Marquardt's damping for each fit, on the place alone: the moment follows. gain
+    (n_rows, n, 3): at the given places, where it is known.
     """
-    places = forward.hold(places)
-    gain = forward.gain(places)
+    start, places = places, forward.hold(places)
+    gain = forward.gain(places) if gain is None else _gain_where_moved(forward, start, places, gain)
     moments, misfit, left = _solved(gain, places, data, priors)
     damping, active, rounds = np.full(len(places), 1e-3), np.arange(len(places)), 0
     while len(active) and rounds < ROUNDS:
         rounds += 1
         known = None if priors is None else priors.some(active)
-        here = gain[:, active]
-        slopes = forward.slopes(places[active], moments[active], here)
-        step, gained = _steps(here, slopes, left[:, active], damping[active], places[active], known)
-        tried = forward.hold(places[active] + step)
+        here, at = gain[:, active], places[active]
+        slopes = forward.slopes(at, moments[active], here)
+        tried, gained = held_steps(
+            forward.hold, at, *_normal_equations(here, slopes, left[:, active], at, known), damping[active]
+        )
         there = forward.gain(tried)
         now = _solved(there, tried, data[:, active], known)
         better = now[1] < misfit[active]
-        moved = np.linalg.norm(tried - places[active], axis=1)
+        moved = np.linalg.norm(tried - at, axis=1)
         won = active[better]
         places[won], moments[won], misfit[won] = tried[better], now[0][better], now[1][better]
         left[:, won], gain[:, won] = now[2][:, better], there[:, better]
         damping[active] = np.maximum(damping[active] * np.where(better, 0.1, 10.0), LEAST_DAMPING)
-        active = active[(moved > CONVERGED) & (gained > NEGLIGIBLE) & (damping[active] < STUCK)]
+        active = active[(moved > CONVERGED) & (np.abs(gained) > NEGLIGIBLE) & (damping[active] < STUCK)]
     return places, moments, misfit, rounds
 
 
@@ -211,15 +217,18 @@ def _solved(
     return np.einsum("nij,nj->ni", inverse, heights), misfit, left
 
 
-def _steps(
-    gain: np.ndarray,
-    slopes: np.ndarray,
-    left: np.ndarray,
-    damping: np.ndarray,
-    places: np.ndarray,
-    priors: Priors | None,
+def _gain_where_moved(forward: Forward, start: np.ndarray, places: np.ndarray, gain: np.ndarray) -> np.ndarray:
+    """The gain at the places from that at the start, computed anew only where they are apart."""
+    gain, moved = gain.copy(), np.flatnonzero((places != start).any(axis=1))
+    if len(moved):
+        gain[:, moved] = forward.gain(places[moved])
+    return gain
+
+
+def _normal_equations(
+    gain: np.ndarray, slopes: np.ndarray, left: np.ndarray, places: np.ndarray, priors: Priors | None
 ) -> tuple[np.ndarray, np.ndarray]:
-    """Damped Gauss-Newton steps (n, 3) [m], none longer than LONGEST_STEP, and what they should gain (n,)."""
+    """Products (n, 3, 3) of what the slopes do to the residuals, and the way downhill (n, 3): Gauss and Newton's."""
     rows = _with_moment_rows(np.moveaxis(gain, 1, 0), priors)
     slopes = np.moveaxis(slopes, 1, 0)
     if priors is not None:
@@ -229,13 +238,7 @@ def _steps(
     if priors is not None:
         matrix = matrix + np.eye(3) / priors.place_sd**2
         downhill = downhill - (places - priors.places) / priors.place_sd**2
-    size = np.einsum("nkk->n", matrix)
-    size = np.where(size > 0, size, 1.0)  # nothing seen: no step
-    matrix = matrix + damping[:, None, None] * np.eye(3) * (size / 3)[:, None, None]
-    step = np.linalg.solve(matrix, downhill[:, :, None])[:, :, 0]
-    length = np.linalg.norm(step, axis=1, keepdims=True)
-    gained = np.einsum("nk,nk->n", downhill, step)
-    return step * np.minimum(1.0, LONGEST_STEP / np.maximum(length, 1e-12)), gained
+    return matrix, downhill
 
 
 def _projected(gain: np.ndarray, slopes: np.ndarray) -> tuple[np.ndarray, np.ndarray]:

@@ -7,16 +7,16 @@ from dataclasses import replace
 import numpy as np
 
 from layout.evidence.dipole_fit import Forward
+from layout.evidence.simulation_boundary import STEP, boundary_forward
 from layout.physics.boundary_cortex import BoundaryCortex
 from layout.physics.boundary_model import LEAST_DEPTH
 from layout.physics.channels import Channels, CortexModel
 from layout.physics.derivatives import lead_field_derivatives
-from layout.physics.differences import LeadFieldDerivatives, central_differences
+from layout.physics.differences import LeadFieldDerivatives
 from layout.physics.nearest_point import nearest_on_surface
 from layout.physics.sphere_model import map_sources
 from layout.units import MM
 
-STEP = 0.25 * MM  # of differences in boundary elements
 UNDER_SURFACE = 1 * MM  # of a fitted dipole under the brain's sphere
 
 
@@ -39,7 +39,13 @@ def some_channels(channels: Channels, rows: np.ndarray) -> Channels:
 
 
 def forward_of(channels: Channels, cortex: CortexModel, whitener: np.ndarray) -> Forward:
-    """The forward model of the channels, its rows whitened by `whitener` (n_rows, n_channels)."""
+    """The forward model of the channels, its rows whitened by `whitener` (n_rows, n_channels).
+
+    Boundary elements are read by `BoundaryForward`, which trusts that places are in the brain, as `hold` has them.
+    """
+    if isinstance(cortex, BoundaryCortex):
+        quick = boundary_forward(channels, cortex, whitener)
+        return Forward(quick.gain, quick.slopes, lambda places: held_inside(cortex, places))
 
     def whitened(rows: np.ndarray) -> np.ndarray:
         return (whitener @ rows.reshape(len(rows), -1)).reshape(len(whitener), *rows.shape[1:])
@@ -48,25 +54,25 @@ def forward_of(channels: Channels, cortex: CortexModel, whitener: np.ndarray) ->
         return whitened(channels.lead_field_at(cortex, places, None))
 
     def slopes(places: np.ndarray, moments: np.ndarray, gain_there: np.ndarray) -> np.ndarray:
-        if not isinstance(cortex, BoundaryCortex):
-            return whitened(fields_at(channels, cortex, places, moments).slopes)
-        moved = gain((places[:, None] + STEP * np.eye(3)).reshape(-1, 3))
-        apart = moved.reshape(len(moved), len(places), 3, 3) - gain_there[:, :, None]
-        return np.einsum("nmdj,mj->nmd", apart, moments) / STEP
+        return whitened(fields_at(channels, cortex, places, moments).slopes)
 
     return Forward(gain, slopes, lambda places: held_inside(cortex, places))
 
 
 def fields_at(channels: Channels, cortex: CortexModel, places: np.ndarray, moments: np.ndarray) -> LeadFieldDerivatives:
-    """Gain and accurate slopes of the channels for moments (m, 3) [A·m] at places (m, 3) [m] in the brain."""
+    """Gain and accurate slopes of the channels for moments (m, 3) [A·m] at places (m, 3) [m] from `held_inside`."""
     if isinstance(cortex, BoundaryCortex):
-
-        def gain(at: np.ndarray) -> np.ndarray:
-            return channels.lead_field_at(cortex, at, None)
-
-        return LeadFieldDerivatives(gain(places), central_differences(gain, places, moments, STEP))
+        return boundary_forward(channels, cortex, np.eye(len(channels))).derivatives(places, moments)
     moved = replace(cortex, sources=map_sources(cortex.sphere, cortex.head, places, None))
     return lead_field_derivatives(channels, moved, np.arange(len(places)), moments)
+
+
+def fields_on(channels: Channels, cortex: CortexModel, grid: np.ndarray | None) -> np.ndarray:
+    """Gain (n, m, 3) of the channels on a grid (m, 3) [m] from `volume_grid`, or of all sources of the cortex."""
+    if isinstance(cortex, BoundaryCortex):
+        places = cortex.placed.positions if grid is None else grid
+        return boundary_forward(channels, cortex, np.eye(len(channels))).gain(places)
+    return channels.lead_field_at(cortex, cortex.head.cortex.positions if grid is None else grid, None)
 
 
 def held_inside(cortex: CortexModel, places: np.ndarray) -> np.ndarray:

@@ -110,6 +110,19 @@ class RecordedStrengths:
         others = [self._sentence(name) for name, one in fit.strengths.items() if one.status != "fitted"]
         if others:
             notes.append(f"Not told by the recording: {'; '.join(others)}.")
+        notes += self.untold
+        notes.append(
+            f"Variances of the recording differ from the fit by {fit.variance_residual / PERCENT:.0f} % rms; "
+            f"{self.goodness}."
+        )
+        if self.remarks:
+            notes.append(f"In {self.file}: {'; '.join(self.remarks)}.")
+        return tuple(notes)
+
+    @property
+    def untold(self) -> tuple[str, ...]:
+        """Sentences on what such a recording cannot tell."""
+        notes = []
         if not self.magnetometers:
             notes.append(
                 "A recording of electrodes says nothing of magnetometers' own noise or of fields from outside, which "
@@ -123,12 +136,6 @@ class RecordedStrengths:
             notes.append("The brief has no eye activity, so what there was of it counts as the other sources.")
         if self.wider:
             notes.append("The recording's band is wider than the brief's, so the fitted strengths are upper estimates.")
-        notes.append(
-            f"Variances of the recording differ from the fit by {fit.variance_residual / PERCENT:.0f} % rms; "
-            f"{self.goodness}."
-        )
-        if self.remarks:
-            notes.append(f"In {self.file}: {'; '.join(self.remarks)}.")
         return tuple(notes)
 
     def _told(self, strength: Strength, per_amplitude: float) -> str:

@@ -244,7 +244,7 @@ def print_placement(found: Placement, console: Console) -> None:
     for one in found.losses:
         loss = one.loss
         table.add_row(
-            Text(f"{_case(one)} ({loss.cases})"),
+            Text(f"{case_text(one)} ({loss.cases})"),
             fixed(loss.mean, 3),
             "exact" if loss.exact else f"{fixed(loss.low, 3)} to {fixed(loss.high, 3)}",
             fixed(_percent(loss.mean, found.value), 1),
@@ -257,7 +257,8 @@ def print_placement(found: Placement, console: Console) -> None:
     say(console, CAUTIONS[1])
 
 
-def _case(one: LossRow) -> str:
+def case_text(one: LossRow) -> str:
+    """A loss's case in words."""
     if one.what == "failures":
         return f"{one.failing} of all {'fails' if one.failing == 1 else 'fail'}"
     parts = [f"{fixed(one.shift / MM, 1)} mm"] if one.shift else []

@@ -313,27 +313,48 @@ def _dipole_terms(sources, vertices, faces, normals, areas, lengths, outward, en
     edge_lengths = _edge_lengths(vertices, ends)
     for s in numba.prange(sources.shape[0]):
         away, far = np.empty((vertices.shape[0], 3)), np.empty(vertices.shape[0])
-        gamma = np.empty(ends.shape[0])
-        at_start, at_end = np.empty(3), np.empty(3)
+        gamma, toward = np.empty(ends.shape[0]), np.empty(ends.shape[0])
         _distances(sources[s], vertices, ends, edge_lengths, away, far, gamma)
+        for e in range(ends.shape[0]):  # with t running from 0 to 1 along the edge: ∫ t dl/R
+            p, q, length = ends[e, 0], ends[e, 1], edge_lengths[e]
+            start = 0.0
+            for axis in range(3):
+                start += away[p, axis] * (away[q, axis] - away[p, axis])
+            toward[e] = (far[q] - far[p] - start / length * gamma[e]) / length
         for f in range(faces.shape[0]):
+            # All of a face in one place and in numbers: its solid angle and its edges are wanted twice, and this loop
+            # is most of the time of every lead field.
             i, j, k = faces[f, 0], faces[f, 1], faces[f, 2]
-            single = _single(f, i, j, k, away, far, gamma, normals, areas, outward, edges)
-            for side in range(3):
-                v, after = faces[f, side], faces[f, (side + 1) % 3]
-                g, length = gamma[edges[f, side]], lengths[f, side]
-                # with s running from 0 to 1 along the edge: ∫ s dl/R and ∫ (1 - s) dl/R
-                start = 0.0
-                for axis in range(3):
-                    start += away[v, axis] * (away[after, axis] - away[v, axis])
-                at_end[side] = (far[after] - far[v] - start / length * g) / length
-                at_start[side] = g - at_end[side]
-            w0, w1, w2 = _linear_angles(f, i, j, k, away, far, gamma, normals, areas, lengths, outward, edges)
-            for corner in range(3):
-                v, before, across = faces[f, corner], (corner + 2) % 3, (corner + 1) % 3
-                w = w0 if corner == 0 else (w1 if corner == 1 else w2)
-                tilt = single * lengths[f, across] * 0.5 / areas[f]
-                for axis in range(3):
-                    on_edges = outward[f, corner, axis] * at_start[corner] + outward[f, before, axis] * at_end[before]
-                    value = normals[f, axis] * w - on_edges - outward[f, across, axis] * tilt
-                    out[s, v, axis] += OVER_4PI * value
+            d = _height(away, normals, i, f)
+            omega = _solid_angle(away, far, i, j, k, 2.0 * areas[f] * d)
+            g0, g1, g2 = gamma[edges[f, 0]], gamma[edges[f, 1]], gamma[edges[f, 2]]
+            ax, ay, az = outward[f, 0, 0], outward[f, 0, 1], outward[f, 0, 2]
+            bx, by, bz = outward[f, 1, 0], outward[f, 1, 1], outward[f, 1, 2]
+            cx, cy, cz = outward[f, 2, 0], outward[f, 2, 1], outward[f, 2, 2]
+            h0 = away[i, 0] * ax + away[i, 1] * ay + away[i, 2] * az
+            h1 = away[j, 0] * bx + away[j, 1] * by + away[j, 2] * bz
+            h2 = away[k, 0] * cx + away[k, 1] * cy + away[k, 2] * cz
+            single = h0 * g0 + h1 * g1 + h2 * g2 - d * omega
+            sx, sy, sz = g0 * ax + g1 * bx + g2 * cx, g0 * ay + g1 * by + g2 * cy, g0 * az + g1 * bz + g2 * cz
+            over = 0.5 / areas[f]
+            m0, m1, m2 = over * lengths[f, 0], over * lengths[f, 1], over * lengths[f, 2]
+            w0 = m1 * (h1 * omega + d * (bx * sx + by * sy + bz * sz))
+            w1 = m2 * (h2 * omega + d * (cx * sx + cy * sy + cz * sz))
+            w2 = m0 * (h0 * omega + d * (ax * sx + ay * sy + az * sz))
+            t0, t1, t2 = toward[edges[f, 0]], toward[edges[f, 1]], toward[edges[f, 2]]
+            if ends[edges[f, 0], 0] != i:
+                t0 = g0 - t0
+            if ends[edges[f, 1], 0] != j:
+                t1 = g1 - t1
+            if ends[edges[f, 2], 0] != k:
+                t2 = g2 - t2
+            nx, ny, nz = normals[f, 0], normals[f, 1], normals[f, 2]
+            out[s, i, 0] += OVER_4PI * (nx * w0 - ax * (g0 - t0) - cx * t2 - bx * single * m1)
+            out[s, i, 1] += OVER_4PI * (ny * w0 - ay * (g0 - t0) - cy * t2 - by * single * m1)
+            out[s, i, 2] += OVER_4PI * (nz * w0 - az * (g0 - t0) - cz * t2 - bz * single * m1)
+            out[s, j, 0] += OVER_4PI * (nx * w1 - bx * (g1 - t1) - ax * t0 - cx * single * m2)
+            out[s, j, 1] += OVER_4PI * (ny * w1 - by * (g1 - t1) - ay * t0 - cy * single * m2)
+            out[s, j, 2] += OVER_4PI * (nz * w1 - bz * (g1 - t1) - az * t0 - cz * single * m2)
+            out[s, k, 0] += OVER_4PI * (nx * w2 - cx * (g2 - t2) - bx * t1 - ax * single * m0)
+            out[s, k, 1] += OVER_4PI * (ny * w2 - cy * (g2 - t2) - by * t1 - ay * single * m0)
+            out[s, k, 2] += OVER_4PI * (nz * w2 - cz * (g2 - t2) - bz * t1 - az * single * m0)

@@ -3,7 +3,7 @@
 import numpy as np
 import pytest
 from references import cramer_rao as table
-from scipy.optimize import least_squares
+from scipy.optimize import least_squares, minimize
 from scipy.stats import chi2
 
 from layout.evidence import dipole_fit
@@ -144,6 +144,34 @@ def test_with_priors_the_fit_is_that_of_a_general_solver(monkeypatch):
         np.testing.assert_allclose(found[k], best.x[:3] / 1e3, atol=3e-6)
         np.testing.assert_allclose(strengths[k], best.x[3:] / 1e9, atol=1e-11)
         assert misfit[k] == pytest.approx(2 * best.cost, rel=1e-5)
+
+
+@KIND
+def test_a_fit_drawn_out_of_the_brain_ends_at_the_best_place_of_its_surface(kind):
+    """Dipoles beyond the surface of the brain: against a general solver over the two angles of the sphere."""
+    forward = FORWARDS[kind]
+    places, moments = (part[:5] for part in planted(6, 9))
+    outside = 0.0875 * places / np.linalg.norm(places, axis=1, keepdims=True)
+    data = signals(forward, outside, 10 * moments)
+    data = data + np.random.default_rng(9).normal(size=data.shape)
+    best = scan(GRID, forward.gain(GRID), data)
+    found, _, misfit, rounds = refine(forward, GRID[best], data)
+    assert rounds < dipole_fit.ROUNDS
+    held = np.flatnonzero(np.linalg.norm(found, axis=1) > BRAIN - 1e-9)
+    assert len(held) >= 3
+
+    def on_sphere(angles, k):
+        place = BRAIN * np.array(
+            [np.sin(angles[0]) * np.cos(angles[1]), np.sin(angles[0]) * np.sin(angles[1]), np.cos(angles[0])]
+        )
+        basis, _ = explained(np.moveaxis(forward.gain(place[None]), 1, 0))
+        return (data[:, k] ** 2).sum() - ((basis[0].T @ data[:, k]) ** 2).sum()
+
+    for k in held:
+        x, y, z = found[k] / BRAIN
+        start = np.array([np.arccos(z), np.arctan2(y, x)]) + 0.02
+        least = minimize(on_sphere, start, args=(k,), method="Nelder-Mead", options={"xatol": 1e-7, "fatol": 1e-9})
+        assert misfit[k] == pytest.approx(least.fun, abs=0.01)  # of unit variance: a tenth of a standard error
 
 
 @KIND
