@@ -9,6 +9,7 @@ from layout.outputs.placement_sheet_style import BOLD, PLAIN, marked_up, style
 from layout.outputs.plain import fixed
 from layout.outputs.sheet_order import ORDER_RULE
 from layout.outputs.sheet_rows import Sheet
+from layout.outputs.sheet_words import ROOM_PERCENT
 from layout.units import MM
 
 if TYPE_CHECKING:
@@ -60,7 +61,7 @@ OFFSET_WORDS = (
 )
 ROOM_WORDS = (
     "<b>Room.</b> How far the sensor may be off, in the worst direction and with all others in place, before the "
-    "layout's value drops by 5 % under the model; > where it does not within what was tried."
+    f"layout's value is worse by {ROOM_PERCENT} under the model; > where it is not within what was tried."
 )
 NO_ROOM_WORDS = "<b>Room.</b> How far a sensor may be off was not computed for this sheet: keep within 5 mm."
 HOUSING_WORDS = (

@@ -6,7 +6,7 @@ from layout.outputs.curve_tables import csv_text
 from layout.outputs.plain import fixed, one_line
 from layout.outputs.sheet_distances import MARKS, NEIGHBOURS, Fix
 from layout.outputs.sheet_rows import Step
-from layout.outputs.sheet_words import room_at
+from layout.outputs.sheet_words import ROOM_PERCENT, room_at
 from layout.units import DEGREE, MM, PERCENT
 
 _NEIGHBOURS = {}
@@ -43,8 +43,8 @@ SHEET = {
     "check_mm": ("Shortest way along the scalp from it", "mm"),
     **_NEIGHBOURS,
     "room_slide_mm": (
-        "How far off the sensor may be along the scalp, in the worst direction, before the value drops by 5 % of "
-        "itself; > and the most tried where it does not; empty where that was not computed",
+        "How far off the sensor may be along the scalp, in the worst direction, before the value is worse by "
+        f"{ROOM_PERCENT} of itself; > and the most tried where it does not; empty where that was not computed",
         "mm",
     ),
     "room_tilt_deg": ("As room_slide_mm: tilted where it meets the scalp; empty for electrodes", "degrees"),

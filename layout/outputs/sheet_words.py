@@ -7,9 +7,10 @@ import numpy as np
 from layout.evidence.tolerance import LEVELS
 from layout.outputs.placement_tables import Room
 from layout.outputs.plain import fixed
-from layout.units import DEGREE, MM
+from layout.units import DEGREE, MM, PERCENT
 
-ROOM_LEVEL = 0.05  # of the value
+ROOM_LEVEL = 0.01  # of the value: at 5 % most sensors may sit anywhere that was tried
+ROOM_PERCENT = f"{ROOM_LEVEL / PERCENT:g} %"
 _WORDS = (("left", "right"), ("back", "front"), ("down", "up"))  # along -x, x; -y, y; -z, z
 UPRIGHT = 10 * DEGREE  # an axis nearer to the normal than this counts as straight out of the head
 FLAT = 80 * DEGREE  # and one farther than this as along the scalp

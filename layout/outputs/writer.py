@@ -13,23 +13,30 @@ from collections.abc import Callable
 from pathlib import Path
 
 from layout.errors import FileError
-from layout.outputs.bids import (
-    COORDSYSTEM_JSON,
-    ELECTRODES_JSON,
-    ELECTRODES_TSV,
-    coordsystem_json,
-    electrodes_json,
-    electrodes_of,
-    electrodes_tsv,
-)
+from layout.outputs.bids import electrodes_of
+from layout.outputs.bids_channels import EEG_TEMPLATE, eeg_sidecar_template, housed_of
+from layout.outputs.bids_dataset import PLACES, bids_files
+from layout.outputs.cap_template import CAP_FILES, cap_files
 from layout.outputs.columns import columns_json
+from layout.outputs.evidence_files import CURVE_FILES, PLACEMENT_FILES, curve_files, placement_tables_of
 from layout.outputs.figure import Picture, scalp_pictures
+from layout.outputs.helmet_files import HELMET_FILES, helmet_files
+from layout.outputs.magnetometers_table import (
+    MAGNETOMETERS_JSON,
+    MAGNETOMETERS_TSV,
+    magnetometers_json,
+    magnetometers_tsv,
+)
+from layout.outputs.methods import methods_text
+from layout.outputs.picture_files import PICTURE_FILES, picture_files
 from layout.outputs.ranking import ranking_json
 from layout.outputs.report import report_html
 from layout.outputs.result import DesignResult, RankedLayout
+from layout.outputs.sheet_files import SHEET_FILES, sheet_files
 from layout.outputs.tables import polished_csv, ranking_csv, sensors_csv
 
 RANKING = "ranking.json"
+REPORT = "report.html"
 AUDIT = "audit.npz"
 Pictures = tuple[Picture, ...]
 
@@ -37,20 +44,23 @@ TOP_FILES: dict[str, Callable[[DesignResult, Pictures], str | bytes]] = {
     RANKING: lambda result, pictures: ranking_json(result),
     "ranking.csv": lambda result, pictures: ranking_csv(result),
     "columns.json": lambda result, pictures: columns_json(result.unit),
-    "report.html": report_html,
+    "methods.txt": lambda result, pictures: methods_text(result),
 }
 LAYOUT_FILES: dict[str, Callable[[DesignResult, RankedLayout, Picture], str | bytes]] = {
     "sensors.csv": lambda result, layout, picture: sensors_csv(layout, result.unit),
     "scalp.png": lambda result, layout, picture: picture.png,
     "scalp.svg": lambda result, layout, picture: picture.svg,
+    "scalp.pdf": lambda result, layout, picture: picture.pdf,
 }
 POLISHED_FILES: dict[str, Callable[[DesignResult], str | bytes]] = {
     "polished.csv": polished_csv,
 }
 ELECTRODE_FILES: dict[str, Callable[[DesignResult, RankedLayout], str | bytes]] = {
-    ELECTRODES_TSV: lambda result, layout: electrodes_tsv(layout),
-    ELECTRODES_JSON: lambda result, layout: electrodes_json(),
-    COORDSYSTEM_JSON: lambda result, layout: coordsystem_json(result),
+    EEG_TEMPLATE: eeg_sidecar_template,
+}
+HOUSED_FILES: dict[str, Callable[[DesignResult, RankedLayout], str | bytes]] = {
+    MAGNETOMETERS_TSV: magnetometers_tsv,
+    MAGNETOMETERS_JSON: magnetometers_json,
 }
 
 
@@ -176,9 +186,10 @@ def _is_earlier_output(folder: Path) -> bool:
 
 def _is_our_file(path: Path) -> bool:
     if len(path.parts) == 1:
-        return path.name in TOP_FILES or path.name in POLISHED_FILES or path.name == AUDIT
-    known = path.name in LAYOUT_FILES or path.name in ELECTRODE_FILES
-    return len(path.parts) == 2 and known and re.fullmatch(r"layout-\d+", path.parts[0]) is not None
+        return path.name in {*TOP_FILES, *POLISHED_FILES, *CURVE_FILES, AUDIT, REPORT}
+    known = {*LAYOUT_FILES, *PICTURE_FILES, *PLACEMENT_FILES, *ELECTRODE_FILES, *HOUSED_FILES}
+    known |= {*HELMET_FILES, *SHEET_FILES, *CAP_FILES, *PLACES}
+    return "/".join(path.parts[1:]) in known and re.fullmatch(r"layout-\d+", path.parts[0]) is not None
 
 
 def _make_parents(folder: Path, made: list[Path]) -> None:
@@ -199,6 +210,8 @@ def _fill(folder: Path, result: DesignResult, audit: bool) -> None:
     pictures = scalp_pictures(result)
     for name, export in TOP_FILES.items():
         _write(folder / name, export(result, pictures))
+    for name, content in curve_files(result).items():
+        _write(folder / name, content)
     if result.polished is not None:
         for name, export in POLISHED_FILES.items():
             _write(folder / name, export(result))
@@ -209,9 +222,26 @@ def _fill(folder: Path, result: DesignResult, audit: bool) -> None:
         place.mkdir()
         for name, export in LAYOUT_FILES.items():
             _write(place / name, export(result, layout, picture))
+        for name, text in placement_tables_of(result, layout).items():
+            _write(place / name, text)
+        for name, content in sheet_files(result, layout).items():
+            _write(place / name, content)
+        for name, content in cap_files(result, layout).items():
+            _write(place / name, content)
         if electrodes_of(layout):
             for name, export in ELECTRODE_FILES.items():
                 _write(place / name, export(result, layout))
+        if housed_of(layout):
+            for name, export in HOUSED_FILES.items():
+                _write(place / name, export(result, layout))
+        for name, text in bids_files(result, layout).items():
+            (place / name).parent.mkdir(parents=True, exist_ok=True)
+            _write(place / name, text)
+    for rank, files in [*picture_files(result), *helmet_files(result)]:
+        for name, content in files.items():
+            _write(folder / f"layout-{rank}" / name, content)
+    beside = sorted(path.relative_to(folder).as_posix() for path in folder.rglob("*") if path.is_file())
+    _write(folder / REPORT, report_html(result, pictures, beside))  # last: it links to all the others
 
 
 def _write(path: Path, content: str | bytes) -> None:

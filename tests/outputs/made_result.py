@@ -22,6 +22,7 @@ from layout.brief.objects import (
 from layout.noise.calibration import Figure
 from layout.outputs.result import Baseline, DesignResult, RankedLayout, RegionFigure, SensorRow
 from layout.sensing.candidates import Candidates, Sites
+from layout.sensing.housing import Rest, poses
 
 HOSTILE_TITLE = '<script>alert("title")</script> & $x_{1}$ [bold]Ω, "quoted"'
 HOSTILE_NAME = 'C3,"<img src=x onerror=alert(1)>"\t[red]ñ;\x1b[31m'
@@ -97,6 +98,7 @@ def _candidates(sites: Sites) -> Candidates:
     two = np.repeat(np.arange(n), 2)
     pairs = np.stack([sites.normals, sites.tangents[:, 0]], axis=1).reshape(-1, 3)
     labels = ("electrode", "one-axis", "two-axis")
+    standing = poses(Rest(sites.normals, sites.positions))
     return Candidates(
         sites=sites,
         kind=kind,
@@ -107,7 +109,7 @@ def _candidates(sites: Sites) -> Candidates:
         positions=np.concatenate([first, second, second[two]]),
         axes=np.concatenate([np.zeros((n, 3)), sites.tangents[:, 0], pairs]),
         is_electrode=np.arange(4 * n) < n,
-        housing_pose=np.tile(np.eye(4), (3 * n, 1, 1)),
+        housing_pose=np.concatenate([np.tile(np.eye(4), (n, 1, 1)), standing, standing]),
         cliques=(),
     )
 

@@ -6,10 +6,14 @@ import json
 from dataclasses import replace
 
 import numpy as np
+from made_evidence import with_evidence
 
 from layout.outputs.columns import columns_json
+from layout.outputs.evidence_files import PLACEMENT_FILES
+from layout.outputs.helmet_columns import CLASHES, POSES
 from layout.outputs.plain import one_line
 from layout.outputs.result import Polished, PolishedSensor
+from layout.outputs.sheet_table import SHEET
 from layout.outputs.tables import SENSOR_COLUMNS, polished_csv, ranking_csv, sensors_csv
 
 
@@ -57,10 +61,15 @@ def test_ranking_has_layouts_then_baselines(result):
 
 def test_columns_json_defines_every_column_and_no_other(result):
     defined = json.loads(columns_json(result.unit))
+    [placed, *_] = with_evidence(result).evidence.placements
     slid = PolishedSensor("a", np.zeros(3), np.zeros(3), np.eye(3), 0.001)
     written = {
         "ranking.csv": ranking_csv(result),
         "layout-*/sensors.csv": sensors_csv(result.layouts[0], result.unit),
+        "layout-*/sheet.csv": ",".join(SHEET),  # see test_sheet_files.py
+        **{f"layout-*/{name}": table(placed) for name, table in PLACEMENT_FILES.items()},
+        "layout-*/helmet-poses.csv": ",".join(POSES),  # see test_helmet_poses.py
+        "layout-*/clashes.csv": ",".join(CLASHES),
         "polished.csv": polished_csv(replace(result, polished=Polished(1.0, 2.0, (slid,)))),
     }
     assert {name: list(columns) for name, columns in defined.items()} == {
@@ -69,7 +78,17 @@ def test_columns_json_defines_every_column_and_no_other(result):
     for columns in defined.values():
         for name, column in columns.items():
             assert column["Description"].strip()
-            assert ("Units" in column) == name.endswith(("_mm", "_bits", "_percent", "percent_of_best")), name
+            measures = (
+                "_mm",
+                "_bits",
+                "_percent",
+                "_deg",
+                "_degrees",
+                "_direction",
+                "percent_of_best",
+                "percent_of_value",
+            )
+            assert ("Units" in column) == name.endswith(measures), name
 
 
 def test_housings_that_meet_are_counted(result, electrodes_only):

@@ -9,7 +9,7 @@ import pytest
 from made_result import make_result
 
 from layout.errors import FileError
-from layout.outputs import writer
+from layout.outputs import report, writer
 from layout.outputs.figure import Picture
 from layout.outputs.writer import check_out_dir, write_result
 
@@ -19,6 +19,11 @@ def _drawn_once(monkeypatch):
     """The pictures have their own tests; here only that they arrive."""
     stub = lambda result: tuple(Picture(b"png%d" % k.rank, b"svg%d" % k.rank) for k in result.layouts)  # noqa: E731
     monkeypatch.setattr(writer, "scalp_pictures", stub)
+    monkeypatch.setattr(writer, "picture_files", lambda result: [])  # tests/outputs/test_paper_pictures.py
+    monkeypatch.setattr(report, "webp", lambda png: png)
+    monkeypatch.setattr(writer, "sheet_files", lambda result, layout: {})  # tests/outputs/test_sheet_files.py
+    monkeypatch.setattr(writer, "cap_files", lambda result, layout: {})  # tests/outputs/test_cap_template.py
+    monkeypatch.setattr(writer, "helmet_files", lambda result: ())  # tests/outputs/test_helmet_files.py
 
 
 def _files(folder):
@@ -29,15 +34,28 @@ def _everything(folder):
     return sorted(str(path.relative_to(folder)) for path in folder.rglob("*"))
 
 
-TOP = {"ranking.json", "ranking.csv", "columns.json", "report.html"}
-EACH = {"sensors.csv", "scalp.png", "scalp.svg"}
-BIDS = {"sub-plan_electrodes.tsv", "sub-plan_electrodes.json", "sub-plan_coordsystem.json"}
+TOP = {"ranking.json", "ranking.csv", "columns.json", "methods.txt", "report.html"}
+EACH = {"sensors.csv", "scalp.png", "scalp.svg", "scalp.pdf"}
+STANDARD = {"bids/dataset_description.json", "bids/README.md"}
+MEG_CHANNELS = {f"bids/sub-plan/meg/sub-plan_task-plan_channels.{ending}" for ending in ("tsv", "json")}
+HOUSED = {"magnetometers.tsv", "magnetometers.json"} | MEG_CHANNELS
+ELECTRODES = {"eeg-sidecar-template.json"} | {
+    f"bids/sub-plan/eeg/sub-plan_{name}"
+    for name in (
+        "electrodes.tsv",
+        "electrodes.json",
+        "coordsystem.json",
+        "task-plan_channels.tsv",
+        "task-plan_channels.json",
+    )
+}
 
 
 def test_all_files_are_there(result, tmp_path):
     out = write_result(result, tmp_path / "deep" / "out")
     files = _files(out)
-    assert set(files) == TOP | {f"layout-{rank}/{name}" for rank in (1, 2, 3) for name in EACH | BIDS}
+    each = EACH | STANDARD | HOUSED | ELECTRODES
+    assert set(files) == TOP | {f"layout-{rank}/{name}" for rank in (1, 2, 3) for name in each}
     assert files["layout-2/scalp.png"] == b"png2"
     assert files["layout-3/scalp.svg"] == b"svg3"
     assert _everything(tmp_path / "deep")[0] == "out"  # no hidden sibling is left
@@ -46,7 +64,8 @@ def test_all_files_are_there(result, tmp_path):
 
 def test_no_electrodes_no_electrode_files(magnetometers_only, tmp_path):
     files = _files(write_result(magnetometers_only, tmp_path / "out"))
-    assert {f"layout-1/{name}" for name in EACH} == {name for name in files if name.startswith("layout-1/")}
+    own = {name.removeprefix("layout-1/") for name in files if name.startswith("layout-1/")}
+    assert own == EACH | STANDARD | HOUSED
 
 
 def test_same_result_same_bytes(tmp_path):
@@ -82,10 +101,10 @@ def test_an_earlier_output_survives_a_failure(result, tmp_path, monkeypatch):
     out = write_result(result, tmp_path / "out")
     before = _files(tmp_path)
 
-    def fail(result, pictures):
+    def fail(result, pictures, beside):
         raise KeyboardInterrupt
 
-    monkeypatch.setitem(writer.TOP_FILES, "report.html", fail)
+    monkeypatch.setattr(writer, "report_html", fail)
     with pytest.raises(KeyboardInterrupt):
         write_result(result, out)
     assert _files(tmp_path) == before
