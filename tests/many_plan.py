@@ -51,7 +51,7 @@ def plan_of(folder: Path, plan: str = PLAN, brief: str = BRIEF):
 
 def slow_work(order):
     """A cell that takes a while."""
-    from layout.design.many_work import work
+    from layout.design.many.work import work
 
     time.sleep(SLEEP)
     return work(order)
@@ -59,7 +59,7 @@ def slow_work(order):
 
 def deadly_work(order):
     """A cell of 6 sensors on the small head under the least noise ends whatever worker takes it."""
-    from layout.design.many_work import work
+    from layout.design.many.work import work
 
     if order.cell.head == "small" and order.cell.amount == 6 and order.cell.noise_factor < 1:
         os.kill(os.getpid(), signal.SIGKILL)

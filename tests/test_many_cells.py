@@ -13,17 +13,17 @@ from scipy.stats import kendalltau
 from studies import BAND, SPHERE, TWO_REGIONS, cups, problem_of, study_of
 
 from layout.cli import cli
-from layout.design import many
-from layout.design.many import ManyCells
-from layout.design.many_board import Board
-from layout.design.many_cells import orders_of
-from layout.design.many_work import failed, forget, work
+from layout.design.many import run as many
+from layout.design.many.board import Board
+from layout.design.many.cells import orders_of
+from layout.design.many.run import ManyCells
+from layout.design.many.work import failed, forget, work
 from layout.design.problem import build_problem, calibrated, patches
 from layout.engine.information import information
 from layout.errors import LayoutError
-from layout.outputs.many_folder import ManyFolder
-from layout.outputs.many_result import CellResult, JudgedLayout
-from layout.outputs.many_tables import many_files
+from layout.outputs.many.folder import ManyFolder
+from layout.outputs.many.result import CellResult, JudgedLayout
+from layout.outputs.many.tables import many_files
 
 SMALL = '[head]\nkind = "sphere"\nsource_mesh = "coarse"\nradii_mm = [70, 75, 80]\n'
 REST = (cups(6, 'family = "10-20"'), BAND, QUICK)

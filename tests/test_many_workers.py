@@ -15,9 +15,9 @@ from click.testing import CliRunner
 from many_plan import deadly_work, plan_of, slow_work, written
 
 from layout.cli import cli
-from layout.design import many_dask
-from layout.design.many import ManyCells
-from layout.outputs.many_folder import TABLES, ManyFolder
+from layout.design.many import on_dask as many_dask
+from layout.design.many.run import ManyCells
+from layout.outputs.many.folder import TABLES, ManyFolder
 
 pytestmark = pytest.mark.slow
 SAME = [name for name in TABLES if name != "times.csv"]

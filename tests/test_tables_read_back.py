@@ -11,9 +11,9 @@ from layout.brief.parse import load_brief
 from layout.design import build_problem, design, lay_out_study
 from layout.design.given_layouts import given_layout
 from layout.engine.information import information
-from layout.outputs.bids import electrodes_tsv
-from layout.outputs.bids_channels import housed_of
-from layout.outputs.magnetometers_table import magnetometers_tsv
+from layout.outputs.bids.channels import housed_of
+from layout.outputs.bids.electrodes import electrodes_tsv
+from layout.outputs.bids.magnetometers_table import magnetometers_tsv
 from layout.outputs.tables import sensors_csv
 
 pytestmark = pytest.mark.slow

@@ -43,14 +43,14 @@ def many(plan: Path, workers: int | None, scheduler: str | None, out: Path | Non
     with printing.progress() as progress:
         progress("reading the plan")
         from layout.brief.parse_plan import load_plan
-        from layout.outputs.many_folder import ManyFolder
-        from layout.outputs.many_tables import many_json
-        from layout.outputs.many_terminal import print_many
+        from layout.outputs.many.folder import ManyFolder
+        from layout.outputs.many.tables import many_json
+        from layout.outputs.many.terminal import print_many
 
         asked = load_plan(plan)
         folder = ManyFolder(out or RUNS / f"{plan.stem}-many")
         progress("loading")
-        from layout.design.many import ManyCells
+        from layout.design.many.run import ManyCells
 
         found = ManyCells(asked, progress).run(folder.known, folder.keep, workers, scheduler)
         folder.finish(found)

@@ -12,8 +12,8 @@ from layout.anatomy.head import Head, Region
 from layout.anatomy.head_size import head_size
 from layout.brief.objects import Brief, BudgetBrief, ZoneBrief
 from layout.noise.calibration import Figure
-from layout.outputs.backdrop import Backdrop, paint_backdrop
-from layout.outputs.figure import (
+from layout.outputs.pictures.backdrop import Backdrop, paint_backdrop
+from layout.outputs.pictures.figure import (
     KIND_COLOURS,
     STYLE,
     Picture,
@@ -25,9 +25,9 @@ from layout.outputs.figure import (
     region_legend,
     rendered,
 )
+from layout.outputs.pictures.views import View, four_views
 from layout.outputs.plain import fixed, one_line, shortened
 from layout.outputs.terminal import new_table, print_figures, print_notes, say
-from layout.outputs.views import View, four_views
 from layout.physics.boundary_cortex import BoundaryCortex
 from layout.physics.channels import CortexModel
 from layout.physics.nearest_point import nearest_on_surface

@@ -4,9 +4,9 @@ from __future__ import annotations
 
 import json
 
-from layout.outputs.helmet_columns import CLASHES, POSES
+from layout.outputs.helmet.columns import CLASHES, POSES
 from layout.outputs.placement_tables import LOSSES, PLACEMENT, SUBSTITUTES
-from layout.outputs.sheet_table import SHEET
+from layout.outputs.sheet.table import SHEET
 
 FRAME = "head frame: origin halfway between LPA and RPA, x towards RPA, y to the front, z up"
 

@@ -5,8 +5,8 @@ from __future__ import annotations
 import os
 from pathlib import Path
 
-from layout.outputs.curve_figure import curve_picture
 from layout.outputs.curve_tables import Curve, CurvePoint, curve_columns, curve_csv, point_from, point_json
+from layout.outputs.pictures.curve_figure import curve_picture
 from layout.outputs.tables_folder import check_tables_dir, read_json, remove, start_folder, write_tables, write_whole
 
 POINTS = "points"

@@ -2,8 +2,8 @@
 
 from __future__ import annotations
 
-from layout.outputs.curve_figure import curve_picture
 from layout.outputs.curve_tables import curve_columns, curve_csv
+from layout.outputs.pictures.curve_figure import curve_picture
 from layout.outputs.placement_tables import losses_csv, placement_csv, substitutes_csv
 from layout.outputs.result import DesignResult, RankedLayout
 

@@ -13,26 +13,26 @@ from collections.abc import Callable
 from pathlib import Path
 
 from layout.errors import FileError
-from layout.outputs.bids import electrodes_of
-from layout.outputs.bids_channels import EEG_TEMPLATE, eeg_sidecar_template, housed_of
-from layout.outputs.bids_dataset import PLACES, bids_files
-from layout.outputs.cap_template import CAP_FILES, cap_files
-from layout.outputs.columns import columns_json
-from layout.outputs.evidence_files import CURVE_FILES, PLACEMENT_FILES, curve_files, placement_tables_of
-from layout.outputs.figure import Picture, scalp_pictures
-from layout.outputs.helmet_files import HELMET_FILES, helmet_files
-from layout.outputs.magnetometers_table import (
+from layout.outputs.bids.channels import EEG_TEMPLATE, eeg_sidecar_template, housed_of
+from layout.outputs.bids.dataset import PLACES, bids_files
+from layout.outputs.bids.electrodes import electrodes_of
+from layout.outputs.bids.magnetometers_table import (
     MAGNETOMETERS_JSON,
     MAGNETOMETERS_TSV,
     magnetometers_json,
     magnetometers_tsv,
 )
-from layout.outputs.methods import methods_text
-from layout.outputs.picture_files import PICTURE_FILES, picture_files
+from layout.outputs.cap.template import CAP_FILES, cap_files
+from layout.outputs.columns import columns_json
+from layout.outputs.evidence_files import CURVE_FILES, PLACEMENT_FILES, curve_files, placement_tables_of
+from layout.outputs.helmet.files import HELMET_FILES, helmet_files
+from layout.outputs.methods.text import methods_text
+from layout.outputs.pictures.figure import Picture, scalp_pictures
+from layout.outputs.pictures.files import PICTURE_FILES, picture_files
 from layout.outputs.ranking import ranking_json
-from layout.outputs.report import report_html
+from layout.outputs.report.page import report_html
 from layout.outputs.result import DesignResult, RankedLayout
-from layout.outputs.sheet_files import SHEET_FILES, sheet_files
+from layout.outputs.sheet.files import SHEET_FILES, sheet_files
 from layout.outputs.tables import polished_csv, ranking_csv, sensors_csv
 
 RANKING = "ranking.json"

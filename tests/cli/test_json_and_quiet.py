@@ -12,7 +12,7 @@ from studies import BAND, SPHERE, TWO_REGIONS, coils, cups
 
 from layout.cli import cli, shared
 from layout.outputs import check, writer
-from layout.outputs.figure import Picture
+from layout.outputs.pictures.figure import Picture
 from layout.outputs.ranking import ranking_json
 
 QUICK = "[search]\nstarts = 2\nproof_parts = 0\nranked = 1\n"

@@ -6,9 +6,9 @@ from functools import cache
 import numpy as np
 from made_result import _rows, make_result
 
-from layout.outputs.cap_pattern import Pattern, make_pattern
-from layout.outputs.cap_piece import draw_piece
-from layout.outputs.cap_template import CAP_A4, CAP_LETTER, CAP_SVG, _pdf, _svg
+from layout.outputs.cap.pattern import Pattern, make_pattern
+from layout.outputs.cap.piece import draw_piece
+from layout.outputs.cap.template import CAP_A4, CAP_LETTER, CAP_SVG, _pdf, _svg
 from layout.outputs.result import DesignResult
 
 

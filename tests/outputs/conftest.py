@@ -23,6 +23,6 @@ def magnetometers_only() -> DesignResult:
 
 @pytest.fixture(scope="session")
 def pictures(result):
-    from layout.outputs.figure import scalp_pictures
+    from layout.outputs.pictures.figure import scalp_pictures
 
     return scalp_pictures(result)

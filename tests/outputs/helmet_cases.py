@@ -12,9 +12,9 @@ from made_result import make_result
 from studies import BAND, SPHERE, region, study_of
 
 from layout.design.describe import _sensor_row
-from layout.outputs.helmet_clash import Room, room_of
-from layout.outputs.helmet_sensors import HousedSensor, housed_sensors
-from layout.outputs.helmet_shell import HelmetShell, helmet_shell, mould
+from layout.outputs.helmet.clash import Room, room_of
+from layout.outputs.helmet.sensors import HousedSensor, housed_sensors
+from layout.outputs.helmet.shell import HelmetShell, helmet_shell, mould
 from layout.outputs.result import DesignResult, RankedLayout
 
 TARGET = region("left", (-45, 5, 50), "left")

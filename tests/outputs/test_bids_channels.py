@@ -7,16 +7,16 @@ import numpy as np
 import pytest
 
 from layout.brief.objects import GradiometerBrief, SitesBrief
-from layout.outputs.bids import electrode_names, electrodes_of
-from layout.outputs.bids_channels import (
+from layout.outputs.bids.channels import (
     eeg_channels_tsv,
     eeg_sidecar_template,
     housed_of,
     meg_channels_tsv,
     meg_type,
 )
-from layout.outputs.bids_dataset import PLACES, bids_files
-from layout.outputs.magnetometers_table import magnetometers_json, magnetometers_tsv
+from layout.outputs.bids.dataset import PLACES, bids_files
+from layout.outputs.bids.electrodes import electrode_names, electrodes_of
+from layout.outputs.bids.magnetometers_table import magnetometers_json, magnetometers_tsv
 from layout.physics.given_lead_field import channel_names as lead_field_names
 from layout.sensing.electrodes_file import read_electrodes
 from layout.sensing.layout_table import read_layout_table

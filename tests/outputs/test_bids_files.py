@@ -7,8 +7,8 @@ import re
 import numpy as np
 from references import bids_electrode_rules as rules
 
-from layout.outputs.bids import coordsystem_json, electrodes_json, electrodes_of, electrodes_tsv
-from layout.outputs.bids_dataset import COORDSYSTEM_JSON, ELECTRODES_JSON, ELECTRODES_TSV
+from layout.outputs.bids.dataset import COORDSYSTEM_JSON, ELECTRODES_JSON, ELECTRODES_TSV
+from layout.outputs.bids.electrodes import coordsystem_json, electrodes_json, electrodes_of, electrodes_tsv
 
 
 def _lines(layout):

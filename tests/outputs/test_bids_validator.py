@@ -6,8 +6,8 @@ import subprocess
 import numpy as np
 import pytest
 
-from layout.outputs.bids_channels import TO_FILL_IN, eeg_sidecar_template
-from layout.outputs.bids_dataset import EEG_CHANNELS_TSV, ELECTRODES_TSV, bids_files
+from layout.outputs.bids.channels import TO_FILL_IN, eeg_sidecar_template
+from layout.outputs.bids.dataset import EEG_CHANNELS_TSV, ELECTRODES_TSV, bids_files
 
 pytestmark = pytest.mark.slow
 # Warnings, looked at one by one. Of a plan: its authors are for those who publish it to name.

@@ -3,9 +3,9 @@
 import numpy as np
 import pytest
 
-from layout.outputs import cap_flatten
-from layout.outputs.cap_flatten import flatten
-from layout.outputs.cap_mesh import boundary_loop
+from layout.outputs.cap import flatten as cap_flatten
+from layout.outputs.cap.flatten import flatten
+from layout.outputs.cap.mesh import boundary_loop
 
 RADIUS = 0.09  # m
 

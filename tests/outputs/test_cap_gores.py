@@ -13,10 +13,10 @@ from layout.anatomy.scalp_points import normals_at, project
 from layout.anatomy.star_surface import icosphere
 from layout.brief.objects import HeadBrief
 from layout.brief.objects_head import HeadSizeBrief
-from layout.outputs.cap_gores import Holes, cut_cap, gore_names
-from layout.outputs.cap_holes import _across
-from layout.outputs.cap_mesh import boundary_loop, cut, halved
-from layout.outputs.cap_rim import CLEAR, find_rim
+from layout.outputs.cap.gores import Holes, cut_cap, gore_names
+from layout.outputs.cap.holes import _across
+from layout.outputs.cap.mesh import boundary_loop, cut, halved
+from layout.outputs.cap.rim import CLEAR, find_rim
 
 
 def _area(surface: Surface) -> float:

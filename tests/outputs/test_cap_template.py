@@ -13,9 +13,9 @@ import shapely
 from cap_cases import cap_pattern, cap_result, cap_written
 
 from layout.anatomy.geodesics import geodesic_distances
-from layout.outputs.cap_piece import draw_piece
-from layout.outputs.cap_template import CAP_A4, CAP_FILES, CAP_LETTER, CAP_SVG, cap_files
-from layout.outputs.cap_tiles import MARGIN, OVERLAP, SIZES, best_pages, joins
+from layout.outputs.cap.piece import draw_piece
+from layout.outputs.cap.template import CAP_A4, CAP_FILES, CAP_LETTER, CAP_SVG, cap_files
+from layout.outputs.cap.tiles import MARGIN, OVERLAP, SIZES, best_pages, joins
 
 SVG = "{http://www.w3.org/2000/svg}"
 POINT = 72 / 25.4  # points in a millimetre

@@ -3,7 +3,7 @@
 import numpy as np
 import trimesh
 
-from layout.outputs.depth_image import seen_faces
+from layout.outputs.pictures.depth_image import seen_faces
 
 
 def test_same_faces_as_ray_casting():

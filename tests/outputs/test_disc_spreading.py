@@ -3,7 +3,7 @@
 import numpy as np
 import pytest
 
-from layout.outputs.spreading import spread_apart
+from layout.outputs.pictures.spreading import spread_apart
 
 
 def _nearest(places):

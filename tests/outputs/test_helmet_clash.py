@@ -18,12 +18,12 @@ from scipy.spatial import cKDTree
 from scipy.spatial.transform import Rotation
 
 from layout.anatomy.head import Surface
-from layout.outputs.helmet_clash import Clash, clash_sentence, clashes_csv, room_of
-from layout.outputs.helmet_columns import CLASHES
-from layout.outputs.helmet_gaps import box_corners, box_gaps, scalp_gaps
-from layout.outputs.helmet_meshes import box
-from layout.outputs.helmet_poses import helmet_poses_json
-from layout.outputs.helmet_sensors import housed_sensors
+from layout.outputs.helmet.clash import Clash, clash_sentence, clashes_csv, room_of
+from layout.outputs.helmet.columns import CLASHES
+from layout.outputs.helmet.gaps import box_corners, box_gaps, scalp_gaps
+from layout.outputs.helmet.meshes import box
+from layout.outputs.helmet.poses import helmet_poses_json
+from layout.outputs.helmet.sensors import housed_sensors
 from layout.sensing.overlap import boxes_overlap
 
 SIZE = np.array([0.012, 0.016, 0.024])

@@ -5,9 +5,9 @@ import dataclasses
 import pytest
 from helmet_cases import helmet_case, slot_case
 
-from layout.outputs import helmet_files as files_of
 from layout.outputs import writer
-from layout.outputs.helmet_files import CLASHES, HELMET_FILES, helmet_files
+from layout.outputs.helmet import files as files_of
+from layout.outputs.helmet.files import CLASHES, HELMET_FILES, helmet_files
 
 ALWAYS = set(HELMET_FILES) - {CLASHES}
 

@@ -8,9 +8,9 @@ import pytest
 import trimesh
 from helmet_cases import angle_between, helmet_case, parts_of, slot_case
 
-from layout.outputs.helmet_glb import HEAD_TO_GLTF, helmet_glb
-from layout.outputs.helmet_meshes import arrow, binary_stl, box, strokes
-from layout.outputs.helmet_stl import sensors_stl
+from layout.outputs.helmet.glb import HEAD_TO_GLTF, helmet_glb
+from layout.outputs.helmet.meshes import arrow, binary_stl, box, strokes
+from layout.outputs.helmet.stl import sensors_stl
 
 NAMES = ["scalp", "housing", "number", "sensitive axis", "x of the housing", "gradient"]
 

@@ -11,9 +11,9 @@ from helmet_cases import angle_between, helmet_case, parts_of, slot_case
 from hypothesis import example, given, settings
 from hypothesis import strategies as st
 
-from layout.outputs.helmet_columns import POSES
-from layout.outputs.helmet_poses import helmet_poses_csv, helmet_poses_json, pose_in_mm
-from layout.outputs.helmet_sensors import HousedSensor
+from layout.outputs.helmet.columns import POSES
+from layout.outputs.helmet.poses import helmet_poses_csv, helmet_poses_json, pose_in_mm
+from layout.outputs.helmet.sensors import HousedSensor
 from layout.sensing.housing import Rest, poses
 
 PLACE = 0.01  # mm

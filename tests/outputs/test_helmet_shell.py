@@ -10,9 +10,9 @@ from helmet_cases import helmet_case, parts_of, slot_case
 from made_result import make_result
 
 from layout.anatomy.head import Surface
-from layout.outputs.helmet_envelope import Envelope, spherical
-from layout.outputs.helmet_sensors import housed_sensors
-from layout.outputs.helmet_shell import (
+from layout.outputs.helmet.envelope import Envelope, spherical
+from layout.outputs.helmet.sensors import housed_sensors
+from layout.outputs.helmet.shell import (
     COLLAR,
     FIT,
     GUIDED,

@@ -7,8 +7,8 @@ from pathlib import Path
 import pytest
 
 from layout.brief.objects import GradiometerBrief, HeadSizeBrief, RecordingBrief, ScenariosBrief, SitesBrief
-from layout.outputs.methods import methods_text
-from layout.outputs.methods_sources import SOURCES, cite, numbered
+from layout.outputs.methods.sources import SOURCES, cite, numbered
+from layout.outputs.methods.text import methods_text
 from layout.outputs.plain import bound_text, fixed, rounded_up
 
 

@@ -10,10 +10,10 @@ from made_evidence import with_evidence
 
 from layout.outputs.columns import columns_json
 from layout.outputs.evidence_files import PLACEMENT_FILES
-from layout.outputs.helmet_columns import CLASHES, POSES
+from layout.outputs.helmet.columns import CLASHES, POSES
 from layout.outputs.plain import one_line
 from layout.outputs.result import Polished, PolishedSensor
-from layout.outputs.sheet_table import SHEET
+from layout.outputs.sheet.table import SHEET
 from layout.outputs.tables import SENSOR_COLUMNS, polished_csv, ranking_csv, sensors_csv
 
 

@@ -10,8 +10,9 @@ import pytest
 from matplotlib.colors import to_rgb
 from pdfminer.pdftypes import resolve1
 
-from layout.outputs.backdrop import REGION_COLOURS, region_colour
-from layout.outputs.cortex_figure import (
+from layout.outputs.evidence_result import ChannelNoise, Evidence
+from layout.outputs.pictures.backdrop import REGION_COLOURS, region_colour
+from layout.outputs.pictures.cortex_figure import (
     PANELS,
     _ends,
     _see,
@@ -22,13 +23,12 @@ from layout.outputs.cortex_figure import (
     ramp_colours,
     smoothed,
 )
-from layout.outputs.evidence_result import ChannelNoise, Evidence
-from layout.outputs.figure import STYLE, scalp_picture
-from layout.outputs.noise_figure import draw_parts, noise_pictures, numbers_along
-from layout.outputs.picture_files import PICTURE_FILES, picture_files
-from layout.outputs.report import RAMP
-from layout.outputs.report_charts import part_colour
-from layout.outputs.views import LEFT
+from layout.outputs.pictures.figure import STYLE, scalp_picture
+from layout.outputs.pictures.files import PICTURE_FILES, picture_files
+from layout.outputs.pictures.noise_figure import draw_parts, noise_pictures, numbers_along
+from layout.outputs.pictures.views import LEFT
+from layout.outputs.report.charts import part_colour
+from layout.outputs.report.page import RAMP
 
 MOST_BYTES = 2e6
 

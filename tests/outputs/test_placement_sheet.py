@@ -11,10 +11,10 @@ from sheet_results import COILS, CUPS, sheet_result
 from sheet_text import pages_of, printed_steps
 
 from layout.outputs.evidence_result import Evidence
-from layout.outputs.placement_sheet import placement_sheet_pdf, sheet_pdf
-from layout.outputs.placement_sheet_style import MARGIN
 from layout.outputs.placement_tables import PlacedSensor, Placement, Room
-from layout.outputs.sheet_rows import sheet_of
+from layout.outputs.sheet.page_style import MARGIN
+from layout.outputs.sheet.pages import placement_sheet_pdf, sheet_pdf
+from layout.outputs.sheet.rows import sheet_of
 
 SIZES = {"a4": (841.89, 595.28), "letter": (792.0, 612.0)}  # points, lying
 SLACK = 0.6  # points: boxes of neighbouring words touch

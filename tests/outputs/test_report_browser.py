@@ -13,7 +13,7 @@ import pytest
 from made_evidence import with_evidence
 from PIL import Image
 
-from layout.outputs.report import report_html
+from layout.outputs.report.page import report_html
 
 CHROMIUM, DRIVER = shutil.which("chromium"), shutil.which("chromedriver")
 pytestmark = [

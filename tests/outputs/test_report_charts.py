@@ -11,7 +11,7 @@ from hypothesis import strategies as st
 from made_evidence import with_evidence
 from PIL import Image
 
-from layout.outputs.report_charts import (
+from layout.outputs.report.charts import (
     BOUND,
     FOUND,
     STANDARD,

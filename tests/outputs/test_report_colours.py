@@ -7,11 +7,11 @@ from pathlib import Path
 import numpy as np
 import pytest
 
-import layout.outputs.report
-from layout.outputs.backdrop import REGION_COLOURS
-from layout.outputs.report import PAPER, RAMP
-from layout.outputs.report_charts import BOUND, EVEN, FOUND, NEGATIVE, PART_COLOURS, POSITIVE, QUIET, STANDARD
-from layout.outputs.report_scene import CORTEX_GREY
+import layout.outputs.report.page
+from layout.outputs.pictures.backdrop import REGION_COLOURS
+from layout.outputs.report.charts import BOUND, EVEN, FOUND, NEGATIVE, PART_COLOURS, POSITIVE, QUIET, STANDARD
+from layout.outputs.report.page import PAPER, RAMP
+from layout.outputs.report.scene import CORTEX_GREY
 
 # Machado, Oliveira & Fernandes 2009, IEEE TVCG 15:1291, severity 1, for linear RGB (as colorspacious 1.1.2 has them)
 VISION = {
@@ -50,7 +50,7 @@ def hexed(rgb):
 
 @pytest.fixture(scope="module")
 def tokens():
-    css = Path(layout.outputs.report.__file__).with_name("report.css").read_text(encoding="utf-8")
+    css = Path(layout.outputs.report.page.__file__).with_name("report.css").read_text(encoding="utf-8")
     return dict(re.findall(r"--(\w[\w-]*): (#[0-9a-f]{6})", css.split("}")[0]))
 
 

@@ -13,8 +13,8 @@ from made_result import HOSTILE_TITLE
 
 from layout.outputs import writer
 from layout.outputs.cautions import CAUTIONS
-from layout.outputs.methods import methods_text
-from layout.outputs.report import report_html
+from layout.outputs.methods.text import methods_text
+from layout.outputs.report.page import report_html
 
 EMPTY = {"meta", "br", "img", "input"}
 

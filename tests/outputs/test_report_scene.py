@@ -11,7 +11,7 @@ from made_evidence import with_evidence
 from scipy.spatial import cKDTree
 
 from layout.anatomy.head import Surface
-from layout.outputs.report_scene import MOST_SCALP, SHAFT, STEP, TIP, arrows, packed, region_borders, scene_json
+from layout.outputs.report.scene import MOST_SCALP, SHAFT, STEP, TIP, arrows, packed, region_borders, scene_json
 from layout.units import MM
 
 

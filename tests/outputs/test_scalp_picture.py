@@ -10,9 +10,9 @@ import pytest
 from made_result import make_result
 from matplotlib.colors import to_rgb
 
-from layout.outputs.backdrop import paint_backdrop, region_colour
-from layout.outputs.figure import STYLE, scalp_figure, scalp_picture
-from layout.outputs.views import BACK, FRONT, LEFT, RIGHT, TOP, four_views
+from layout.outputs.pictures.backdrop import paint_backdrop, region_colour
+from layout.outputs.pictures.figure import STYLE, scalp_figure, scalp_picture
+from layout.outputs.pictures.views import BACK, FRONT, LEFT, RIGHT, TOP, four_views
 
 VIEWS = (TOP, FRONT, BACK, LEFT, RIGHT)
 

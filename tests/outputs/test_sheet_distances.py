@@ -12,8 +12,8 @@ from sheet_text import ENDS, printed_steps
 
 from layout.anatomy.head import Landmarks, Surface
 from layout.anatomy.positions import standard_positions
-from layout.outputs.placement_sheet import placement_sheet_pdf
-from layout.outputs.sheet_distances import MARKS, READING, STRETCH, Tape
+from layout.outputs.sheet.distances import MARKS, READING, STRETCH, Tape
+from layout.outputs.sheet.pages import placement_sheet_pdf
 
 
 @pytest.mark.slow

@@ -7,8 +7,8 @@ from dataclasses import replace
 import pytest
 from sheet_text import printed_steps
 
-from layout.outputs.sheet_files import SHEET_A4, SHEET_CSV, SHEET_FILES, SHEET_LETTER, sheet_files
-from layout.outputs.sheet_table import SHEET
+from layout.outputs.sheet.files import SHEET_A4, SHEET_CSV, SHEET_FILES, SHEET_LETTER, sheet_files
+from layout.outputs.sheet.table import SHEET
 
 
 @pytest.fixture(scope="module")

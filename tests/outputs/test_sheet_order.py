@@ -4,7 +4,7 @@ from dataclasses import replace
 
 import numpy as np
 
-from layout.outputs.sheet_order import placing_order
+from layout.outputs.sheet.order import placing_order
 
 VERTEX = np.array([0.0, 0.0, 0.125])
 

@@ -4,7 +4,7 @@ import numpy as np
 import pytest
 
 from layout.outputs.placement_tables import Room
-from layout.outputs.sheet_words import axis_words, direction_words, offset_words, room_at
+from layout.outputs.sheet.words import axis_words, direction_words, offset_words, room_at
 
 TOP, LEFT_SIDE, RIGHT_SIDE, FOREHEAD, BACK = np.array(
     [[0, 0, 1.0], [-1.0, 0, 0], [1.0, 0, 0], [0, 1.0, 0], [0, -1.0, 0]]

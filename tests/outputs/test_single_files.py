@@ -4,7 +4,7 @@ import pytest
 
 from layout.errors import FileError
 from layout.outputs import writer
-from layout.outputs.figure import Picture
+from layout.outputs.pictures.figure import Picture
 from layout.outputs.writer import write_new_text, write_picture
 
 PICTURE = Picture(b"png", b"svg")

@@ -9,8 +9,9 @@ import pytest
 from made_result import make_result
 
 from layout.errors import FileError
-from layout.outputs import report, writer
-from layout.outputs.figure import Picture
+from layout.outputs import writer
+from layout.outputs.pictures.figure import Picture
+from layout.outputs.report import page as report
 from layout.outputs.writer import check_out_dir, write_result
 
 

@@ -1,0 +1,1 @@
+"""What open standards have a form for, and a plain table for what they have not."""

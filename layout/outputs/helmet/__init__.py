@@ -1,0 +1,1 @@
+"""Helmets: poses of the housings, clash check, models of sensors and shell."""

@@ -1,0 +1,1 @@
+"""The methods section of a paper, from the result's own numbers."""

@@ -1,0 +1,1 @@
+"""Pictures for papers and pages, by matplotlib."""

@@ -1,0 +1,1 @@
+"""report.html: one page with a head to turn, tables, charts and words."""

@@ -1,0 +1,1 @@
+"""Placement sheets: what a technician carries to the head."""
