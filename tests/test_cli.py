@@ -21,6 +21,7 @@ from layout import __version__, design
 from layout.cli import cli
 from layout.errors import LayoutError
 from layout.outputs import writer
+from layout.outputs.design_files import audit_npz
 from layout.outputs.ranking import ranking_json
 
 ROOT = Path(__file__).parent.parent
@@ -43,10 +44,10 @@ def invoke(*words):
     return CliRunner().invoke(cli, [str(word) for word in words])
 
 
-def only_numbers(folder, result, audit):
+def only_numbers(folder, result, audit, progress):
     """What the writer puts into the folder, less everything that is drawn."""
     writer._write(folder / "ranking.json", ranking_json(result))
-    writer._write_audit(folder / "audit.npz", result)
+    writer._write(folder / "audit.npz", audit_npz(result))
 
 
 @pytest.fixture(scope="module")

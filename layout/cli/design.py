@@ -46,9 +46,8 @@ def design(brief: Path, out: Path | None, audit: bool, quick: bool, printing: Pr
         from layout.outputs.writer import write_result
 
         result = find_layouts(asked, progress, evidence=not quick)
-        progress("drawing and writing")
         # Written before it is printed: a closed pipe behind the tables must not cost the folder.
-        write_result(result, place, audit=audit)
+        write_result(result, place, audit=audit, progress=progress)
     printing.result(
         lambda console: print_result(result, console),
         lambda: ranking_json(result),

@@ -37,7 +37,14 @@ DESCRIBE = (
     Stage("baselines", 0.3),
     Stage(r"sliding sensors", 20.0, certain=False),
 )
-DRAW = Stage("drawing", 7.0)
+DRAW = Stage("drawing", 3.0)
+WRITE = (
+    Stage("drawing the scalp", 7.0),
+    Stage(r"papers for the bench, layout \d+ of", 9.0),
+    Stage("drawing cortex and noise", 8.0),
+    Stage("shaping helmets", 2.0),
+    Stage("making the page", 2.0),
+)
 
 CHECK = (*LAY_OUT, FIELDS[1], DRAW)
 NOISE = (*LAY_OUT, FIELDS[1])
@@ -58,8 +65,9 @@ EVIDENCE = (
     Stage(r"misplacement \d+ of", 4.0, (Stage("lead fields of layouts", 4.0),)),
     *CURVE_POINTS,
 )
-QUICK_DESIGN = (*LAY_OUT, *FIELDS, OTHER_SCENARIOS, FEWEST, *SEARCH, *DESCRIBE, DRAW)
-DESIGN = (*QUICK_DESIGN[:-1], *EVIDENCE, DRAW)
+FOUND = (*LAY_OUT, *FIELDS, OTHER_SCENARIOS, FEWEST, *SEARCH, *DESCRIBE)
+QUICK_DESIGN = (*FOUND, *WRITE)
+DESIGN = (*FOUND, *EVIDENCE, *WRITE)
 CURVE = (*LAY_OUT, *FIELDS, OTHER_SCENARIOS, *CURVE_POINTS, Stage("drawing", 1.0))
 ASSESS = (
     *LAY_OUT,

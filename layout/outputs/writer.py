@@ -6,67 +6,28 @@ from __future__ import annotations
 import contextlib
 import json
 import os
-import re
 import secrets
 import shutil
 from collections.abc import Callable
 from pathlib import Path
 
 from layout.errors import FileError
-from layout.outputs.bids.channels import EEG_TEMPLATE, eeg_sidecar_template, housed_of
-from layout.outputs.bids.dataset import PLACES, bids_files
-from layout.outputs.bids.electrodes import electrodes_of
-from layout.outputs.bids.magnetometers_table import (
-    MAGNETOMETERS_JSON,
-    MAGNETOMETERS_TSV,
-    magnetometers_json,
-    magnetometers_tsv,
-)
-from layout.outputs.cap.template import CAP_FILES, cap_files
-from layout.outputs.columns import columns_json
-from layout.outputs.evidence_files import CURVE_FILES, PLACEMENT_FILES, curve_files, placement_tables_of
-from layout.outputs.helmet.files import HELMET_FILES, helmet_files
-from layout.outputs.methods.text import methods_text
-from layout.outputs.pictures.figure import Picture, scalp_pictures
-from layout.outputs.pictures.files import PICTURE_FILES, picture_files
-from layout.outputs.ranking import ranking_json
-from layout.outputs.report.page import report_html
-from layout.outputs.result import DesignResult, RankedLayout
-from layout.outputs.sheet.files import SHEET_FILES, sheet_files
-from layout.outputs.tables import polished_csv, ranking_csv, sensors_csv
+from layout.outputs.design_files import RANKING, design_files, is_of_design
+from layout.outputs.pictures.figure import Picture
+from layout.outputs.result import DesignResult
 
-RANKING = "ranking.json"
-REPORT = "report.html"
-AUDIT = "audit.npz"
-Pictures = tuple[Picture, ...]
-
-TOP_FILES: dict[str, Callable[[DesignResult, Pictures], str | bytes]] = {
-    RANKING: lambda result, pictures: ranking_json(result),
-    "ranking.csv": lambda result, pictures: ranking_csv(result),
-    "columns.json": lambda result, pictures: columns_json(result.unit),
-    "methods.txt": lambda result, pictures: methods_text(result),
-}
-LAYOUT_FILES: dict[str, Callable[[DesignResult, RankedLayout, Picture], str | bytes]] = {
-    "sensors.csv": lambda result, layout, picture: sensors_csv(layout, result.unit),
-    "scalp.png": lambda result, layout, picture: picture.png,
-    "scalp.svg": lambda result, layout, picture: picture.svg,
-    "scalp.pdf": lambda result, layout, picture: picture.pdf,
-}
-POLISHED_FILES: dict[str, Callable[[DesignResult], str | bytes]] = {
-    "polished.csv": polished_csv,
-}
-ELECTRODE_FILES: dict[str, Callable[[DesignResult, RankedLayout], str | bytes]] = {
-    EEG_TEMPLATE: eeg_sidecar_template,
-}
-HOUSED_FILES: dict[str, Callable[[DesignResult, RankedLayout], str | bytes]] = {
-    MAGNETOMETERS_TSV: magnetometers_tsv,
-    MAGNETOMETERS_JSON: magnetometers_json,
-}
+Progress = Callable[[str], None]
 
 
-def write_result(result: DesignResult, out_dir: str | os.PathLike, audit: bool = False) -> Path:
+def _silent(doing: str) -> None:
+    """Progress that says nothing."""
+
+
+def write_result(
+    result: DesignResult, out_dir: str | os.PathLike, audit: bool = False, progress: Progress = _silent
+) -> Path:
     """Write every file of `result` to `out_dir` (made, or replaced if it is an earlier output) and return its
-    path.
+    path; `progress` is told what is being made.
 
     On any exception, Ctrl-C included, nothing is left behind and an earlier output stays as it was. Raises
     FileError where `check_out_dir` does and where the system refuses to write.
@@ -77,7 +38,7 @@ def write_result(result: DesignResult, out_dir: str | os.PathLike, audit: bool =
     try:
         _make_parents(out.parent, made)
         fresh.mkdir()
-        _fill(fresh, result, audit)
+        _fill(fresh, result, audit, progress)
         _put_in_place(fresh, out)
     except BaseException as problem:
         shutil.rmtree(fresh, ignore_errors=True)
@@ -168,7 +129,7 @@ def check_out_dir(out_dir: str | os.PathLike) -> Path:
             f"the output folder {name!r} holds something else: it must be new, empty or from an earlier run"
         )
     for path in entries:
-        if not _is_our_file(path.relative_to(out)):
+        if not is_of_design(path.relative_to(out).as_posix()):
             raise FileError(
                 f"the output folder {name!r} must hold only what an earlier run wrote, and it also holds "
                 f"{str(path.relative_to(out))!r}"
@@ -182,14 +143,6 @@ def _is_earlier_output(folder: Path) -> bool:
     except (OSError, ValueError):
         return False
     return isinstance(content, dict) and isinstance(content.get("schema"), int) and "layouts" in content
-
-
-def _is_our_file(path: Path) -> bool:
-    if len(path.parts) == 1:
-        return path.name in {*TOP_FILES, *POLISHED_FILES, *CURVE_FILES, AUDIT, REPORT}
-    known = {*LAYOUT_FILES, *PICTURE_FILES, *PLACEMENT_FILES, *ELECTRODE_FILES, *HOUSED_FILES}
-    known |= {*HELMET_FILES, *SHEET_FILES, *CAP_FILES, *PLACES}
-    return "/".join(path.parts[1:]) in known and re.fullmatch(r"layout-\d+", path.parts[0]) is not None
 
 
 def _make_parents(folder: Path, made: list[Path]) -> None:
@@ -206,52 +159,15 @@ def _remove_empty(made: list[Path]) -> None:
             folder.rmdir()
 
 
-def _fill(folder: Path, result: DesignResult, audit: bool) -> None:
-    pictures = scalp_pictures(result)
-    for name, export in TOP_FILES.items():
-        _write(folder / name, export(result, pictures))
-    for name, content in curve_files(result).items():
-        _write(folder / name, content)
-    if result.polished is not None:
-        for name, export in POLISHED_FILES.items():
-            _write(folder / name, export(result))
-    if audit:
-        _write_audit(folder / AUDIT, result)
-    for layout, picture in zip(result.layouts, pictures, strict=True):
-        place = folder / f"layout-{layout.rank}"
-        place.mkdir()
-        for name, export in LAYOUT_FILES.items():
-            _write(place / name, export(result, layout, picture))
-        for name, text in placement_tables_of(result, layout).items():
-            _write(place / name, text)
-        for name, content in sheet_files(result, layout).items():
-            _write(place / name, content)
-        for name, content in cap_files(result, layout).items():
-            _write(place / name, content)
-        if electrodes_of(layout):
-            for name, export in ELECTRODE_FILES.items():
-                _write(place / name, export(result, layout))
-        if housed_of(layout):
-            for name, export in HOUSED_FILES.items():
-                _write(place / name, export(result, layout))
-        for name, text in bids_files(result, layout).items():
-            (place / name).parent.mkdir(parents=True, exist_ok=True)
-            _write(place / name, text)
-    for rank, files in [*picture_files(result), *helmet_files(result)]:
-        for name, content in files.items():
-            _write(folder / f"layout-{rank}" / name, content)
-    beside = sorted(path.relative_to(folder).as_posix() for path in folder.rglob("*") if path.is_file())
-    _write(folder / REPORT, report_html(result, pictures, beside))  # last: it links to all the others
+def _fill(folder: Path, result: DesignResult, audit: bool, progress: Progress) -> None:
+    for name, content in design_files(result, audit, progress):
+        path = folder / name
+        path.parent.mkdir(parents=True, exist_ok=True)
+        _write(path, content)
 
 
 def _write(path: Path, content: str | bytes) -> None:
     path.write_bytes(content.encode("utf-8") if isinstance(content, str) else content)
-
-
-def _write_audit(path: Path, result: DesignResult) -> None:
-    import numpy as np
-
-    np.savez_compressed(path, **{name: result.audit[name] for name in sorted(result.audit)})
 
 
 def _put_in_place(fresh: Path, out: Path) -> None:

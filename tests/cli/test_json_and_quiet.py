@@ -11,6 +11,7 @@ from click.testing import CliRunner
 from studies import BAND, SPHERE, TWO_REGIONS, coils, cups
 
 from layout.cli import cli, shared
+from layout.cli.stages import WRITE
 from layout.outputs import check, writer
 from layout.outputs.pictures.figure import Picture
 from layout.outputs.ranking import ranking_json
@@ -51,7 +52,7 @@ def answers(tmp_path_factory):
     cups_only = (SPHERE, TWO_REGIONS, cups(4, 'family = "10-20"'), BAND, QUICK)
     (folder / "cups.toml").write_text('schema = 1\ntitle = "cups"\n' + "\n".join(cups_only))
 
-    def fill(folder, result, audit):
+    def fill(folder, result, audit, progress):
         (folder / "ranking.json").write_text(ranking_json(result), encoding="utf-8")
 
     def answer(name, *more):
@@ -237,4 +238,5 @@ def test_every_message_is_of_a_stage_and_every_stage_is_met(answers, name):
             if stage.steps and rest:
                 assert any(re.match(step.says, rest) for step in stage.steps), doing
     left_out = {r"proof: \d+ of"}  # these briefs ask for none
+    left_out |= {stage.says for stage in WRITE}  # tests/outputs/test_writer.py
     assert {stage.says for stage in stages if stage.certain} - met <= left_out

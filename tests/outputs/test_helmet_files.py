@@ -5,7 +5,7 @@ import dataclasses
 import pytest
 from helmet_cases import helmet_case, slot_case
 
-from layout.outputs import writer
+from layout.outputs import design_files, writer
 from layout.outputs.helmet import files as files_of
 from layout.outputs.helmet.files import CLASHES, HELMET_FILES, helmet_files
 
@@ -38,16 +38,16 @@ def test_clashes_get_a_table():
 
 
 def test_the_writer_puts_them_beside_the_layout_and_knows_them_again(tmp_path, monkeypatch):
-    ranking = {writer.RANKING: lambda result, pictures: '{"schema": 1, "layouts": []}'}
-    monkeypatch.setattr(writer, "TOP_FILES", ranking)  # pictures, page and the shell have their own tests
-    monkeypatch.setattr(writer, "LAYOUT_FILES", {})
+    ranking = {design_files.RANKING: lambda result: '{"schema": 1, "layouts": []}'}
+    monkeypatch.setattr(design_files, "TOP_FILES", ranking)  # pictures, page and the shell have their own tests
+    monkeypatch.setattr(design_files, "LAYOUT_FILES", {})
     for name, stub in (
         ("scalp_pictures", lambda result: (None,) * len(result.layouts)),
         ("picture_files", lambda result: []),
         ("sheet_files", lambda result, layout: {}),
         ("report_html", lambda *_: "page"),
     ):
-        monkeypatch.setattr(writer, name, stub)
+        monkeypatch.setattr(design_files, name, stub)
     monkeypatch.setattr(files_of, "helmet_shell_stl", lambda *_: b"shell")
     out = writer.write_result(slot_case(), tmp_path / "out")
     assert {path.name for path in (out / "layout-1").iterdir()} >= ALWAYS

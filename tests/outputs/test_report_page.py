@@ -11,7 +11,7 @@ import pytest
 from made_evidence import with_evidence
 from made_result import HOSTILE_TITLE
 
-from layout.outputs import writer
+from layout.outputs import design_files, writer
 from layout.outputs.cautions import CAUTIONS
 from layout.outputs.methods.text import methods_text
 from layout.outputs.report.page import report_html
@@ -93,12 +93,12 @@ def test_only_its_own_two_scripts_may_run(page, html):
 
 
 def test_links_lead_to_every_file_that_was_written(evident, pictures, tmp_path, monkeypatch):
-    monkeypatch.setattr(writer, "scalp_pictures", lambda result: pictures)
-    monkeypatch.setattr(writer, "sheet_files", lambda result, layout: {"placement-sheet-a4.pdf": b"stands for it"})
-    monkeypatch.setattr(writer, "helmet_files", lambda result: ())
-    monkeypatch.setattr(writer, "cap_files", lambda result, layout: {})
-    monkeypatch.setattr(writer, "curve_files", lambda result: {})
-    monkeypatch.setattr(writer, "picture_files", lambda result: ())
+    monkeypatch.setattr(design_files, "scalp_pictures", lambda result: pictures)
+    monkeypatch.setattr(design_files, "sheet_files", lambda result, layout: {"placement-sheet-a4.pdf": b"a sheet"})
+    monkeypatch.setattr(design_files, "helmet_files", lambda result: ())
+    monkeypatch.setattr(design_files, "cap_files", lambda result, layout: {})
+    monkeypatch.setattr(design_files, "curve_files", lambda result: {})
+    monkeypatch.setattr(design_files, "picture_files", lambda result: ())
     folder = writer.write_result(evident, tmp_path / "out")
     files = {path.relative_to(folder).as_posix() for path in folder.rglob("*") if path.is_file()} - {"report.html"}
     links = [a["href"] for a in Page((folder / "report.html").read_text(encoding="utf-8")).all("a")]

@@ -2,14 +2,16 @@
 
 import dataclasses
 import json
+import re
 import zipfile
 
 import numpy as np
 import pytest
 from made_result import make_result
 
+from layout.cli.stages import WRITE
 from layout.errors import FileError
-from layout.outputs import writer
+from layout.outputs import design_files
 from layout.outputs.pictures.figure import Picture
 from layout.outputs.report import page as report
 from layout.outputs.writer import check_out_dir, write_result
@@ -19,12 +21,12 @@ from layout.outputs.writer import check_out_dir, write_result
 def _drawn_once(monkeypatch):
     """The pictures have their own tests; here only that they arrive."""
     stub = lambda result: tuple(Picture(b"png%d" % k.rank, b"svg%d" % k.rank) for k in result.layouts)  # noqa: E731
-    monkeypatch.setattr(writer, "scalp_pictures", stub)
-    monkeypatch.setattr(writer, "picture_files", lambda result: [])  # tests/outputs/test_paper_pictures.py
+    monkeypatch.setattr(design_files, "scalp_pictures", stub)
+    monkeypatch.setattr(design_files, "picture_files", lambda result: [])  # tests/outputs/test_paper_pictures.py
     monkeypatch.setattr(report, "webp", lambda png: png)
-    monkeypatch.setattr(writer, "sheet_files", lambda result, layout: {})  # tests/outputs/test_sheet_files.py
-    monkeypatch.setattr(writer, "cap_files", lambda result, layout: {})  # tests/outputs/test_cap_template.py
-    monkeypatch.setattr(writer, "helmet_files", lambda result: ())  # tests/outputs/test_helmet_files.py
+    monkeypatch.setattr(design_files, "sheet_files", lambda result, layout: {})  # tests/outputs/test_sheet_files.py
+    monkeypatch.setattr(design_files, "cap_files", lambda result, layout: {})  # tests/outputs/test_cap_template.py
+    monkeypatch.setattr(design_files, "helmet_files", lambda result: ())  # tests/outputs/test_helmet_files.py
 
 
 def _files(folder):
@@ -63,6 +65,14 @@ def test_all_files_are_there(result, tmp_path):
     assert sum(path.startswith(".") for path in _everything(tmp_path / "deep")) == 0
 
 
+def test_what_is_being_made_is_told_in_the_order_of_the_stages(result, tmp_path):
+    told = []
+    write_result(result, tmp_path / "out", progress=told.append)
+    stages = [next(place for place, stage in enumerate(WRITE) if re.match(stage.says, doing)) for doing in told]
+    assert stages == sorted(stages)
+    assert set(stages) == set(range(len(WRITE)))
+
+
 def test_no_electrodes_no_electrode_files(magnetometers_only, tmp_path):
     files = _files(write_result(magnetometers_only, tmp_path / "out"))
     own = {name.removeprefix("layout-1/") for name in files if name.startswith("layout-1/")}
@@ -91,7 +101,7 @@ def test_nothing_half_written(result, tmp_path, monkeypatch, problem):
             raise problem
         return "fine"
 
-    monkeypatch.setitem(writer.LAYOUT_FILES, "sensors.csv", fail)
+    monkeypatch.setitem(design_files.LAYOUT_FILES, "sensors.csv", fail)
     expected = FileError if isinstance(problem, OSError) else type(problem)
     with pytest.raises(expected):
         write_result(result, tmp_path / "new" / "deep" / "out")
@@ -105,7 +115,7 @@ def test_an_earlier_output_survives_a_failure(result, tmp_path, monkeypatch):
     def fail(result, pictures, beside):
         raise KeyboardInterrupt
 
-    monkeypatch.setattr(writer, "report_html", fail)
+    monkeypatch.setattr(design_files, "report_html", fail)
     with pytest.raises(KeyboardInterrupt):
         write_result(result, out)
     assert _files(tmp_path) == before
