@@ -18,7 +18,13 @@ import time
 from pathlib import Path
 
 ROOT = Path(__file__).parents[2]
-KEPT = ("ranking.csv", "layout-1/sensors.csv", "layout-1/bids/sub-plan/eeg/sub-plan_electrodes.tsv")
+KEPT = (
+    "ranking.csv",
+    "curve.csv",
+    "methods.txt",
+    *(f"layout-1/{name}.csv" for name in ("sensors", "placement", "sheet", "helmet-poses")),
+    "layout-1/bids/sub-plan/eeg/sub-plan_electrodes.tsv",
+)
 PICTURE = "layout-1/scalp.png"  # kept for the README's brief only
 COLUMNS = 100  # of the kept terminal output
 
