@@ -9,6 +9,7 @@ import pytest
 
 import layout.outputs.report.page
 from layout.outputs.pictures.backdrop import REGION_COLOURS
+from layout.outputs.pictures.figure import GROUND_COLOUR, KIND_COLOURS
 from layout.outputs.report.charts import BOUND, EVEN, FOUND, NEGATIVE, PART_COLOURS, POSITIVE, QUIET, STANDARD
 from layout.outputs.report.page import PAPER, RAMP
 from layout.outputs.report.scene import CORTEX_GREY
@@ -68,6 +69,8 @@ def test_text_on_every_ground(tokens, ground):
 
 
 def test_words_and_marks_in_charts(tokens):
+    for colour in (*KIND_COLOURS, GROUND_COLOUR):
+        assert contrast(colour, "#ffffff") >= 4.5  # the number on a sensor's disc
     assert contrast(tokens["accent-ink"], tokens["accent"]) >= 4.5
     for colour in (FOUND, BOUND, EVEN, STANDARD, QUIET):
         assert contrast(colour, tokens["card"]) >= 4.5
@@ -76,7 +79,8 @@ def test_words_and_marks_in_charts(tokens):
 
 @pytest.mark.parametrize("vision", VISION)
 def test_colours_that_tell_things_apart_do_so_for_every_eye(vision):
-    for group in ((*REGION_COLOURS, CORTEX_GREY), PART_COLOURS, (hexed(NEGATIVE), hexed(POSITIVE), "#fafaf8")):
+    groups = ((*REGION_COLOURS, CORTEX_GREY), (*KIND_COLOURS, GROUND_COLOUR), PART_COLOURS)
+    for group in (*groups, (hexed(NEGATIVE), hexed(POSITIVE), "#fafaf8")):
         for one, other in itertools.combinations(group, 2):
             assert np.linalg.norm(lab(one, vision) - lab(other, vision)) > APART, (one, other)
     light = [lab(colour, vision)[0] for colour in RAMP]

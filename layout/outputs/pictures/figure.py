@@ -30,7 +30,7 @@ DISC_RADIUS = 5.6e-3  # m on the head's own scale
 ARROW = 14.5e-3  # m, an axis lying in the picture's plane
 HEAD_ON = 0.87  # cosine beyond which an axis has no arrow worth drawing
 BEHIND = 4e-3  # m: a site this far under the nearest scalp is on the far side
-KIND_COLOURS = ("#0B3C6F", "#1B1B1B", "#5B2A6E", "#5C3A12")
+KIND_COLOURS = ("#0B3C6F", "#1B1B1B", "#996600", "#0000D6")
 GROUND_COLOUR = "#6B6B6B"
 STYLE = {
     "text.parse_math": False,
