@@ -7,14 +7,21 @@ from pathlib import Path
 import click
 
 from layout.cli.completions import brief_argument
-from layout.cli.shared import RUNS, Printing, printing_options, seen_from_here
+from layout.cli.shared import ABOVE_ZERO, RUNS, Printing, printing_options, seen_from_here
 from layout.cli.stages import ASSESS
 
 
 @click.command()
 @brief_argument
 @click.argument("layouts", nargs=-1, required=True, metavar="LAYOUT...")
-@click.option("--within-mm", default=10.0, show_default=True, metavar="MM", help="Farthest from a candidate site.")
+@click.option(
+    "--within-mm",
+    type=ABOVE_ZERO,
+    default=10.0,
+    show_default=True,
+    metavar="MM",
+    help="Farthest from a candidate site.",
+)
 @click.option("--other-models", is_flag=True, help="Also judge under other skulls, noise levels and head sizes.")
 @click.option(
     "--out",

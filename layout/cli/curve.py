@@ -32,7 +32,7 @@ def curve(
     Example: layout curve configs/readme.toml --counts 4:12:4
     """
     if (counts is None) == (budgets is None):
-        raise click.UsageError("One of --counts and --budgets must be given.")
+        raise click.UsageError("One of --counts and --budgets must be given, and not both.")
     with printing.progress(CURVE) as progress:
         progress("reading the brief")
         from layout.brief.parse import load_brief

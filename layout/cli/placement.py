@@ -5,9 +5,10 @@ from __future__ import annotations
 from pathlib import Path
 
 import click
+from click.core import ParameterSource
 
 from layout.cli.completions import brief_argument
-from layout.cli.shared import RUNS, Printing, printing_options, seen_from_here
+from layout.cli.shared import ABOVE_ZERO, RUNS, Printing, printing_options, seen_from_here
 from layout.cli.stages import PLACEMENT
 
 
@@ -15,7 +16,9 @@ from layout.cli.stages import PLACEMENT
 @brief_argument
 @click.option("--rank", default=1, show_default=True, metavar="N", help="Which of the layouts that a search finds.")
 @click.option("--layout", metavar="LAYOUT", help="A given layout in its place, as in `layout assess`.")
-@click.option("--within-mm", default=10.0, show_default=True, metavar="MM", help="As in `layout assess`.")
+@click.option(
+    "--within-mm", type=ABOVE_ZERO, default=10.0, show_default=True, metavar="MM", help="As in `layout assess`."
+)
 @click.option("--shift-mm", default=5.0, show_default=True, metavar="MM", help="rms random shift along each tangent.")
 @click.option("--tilt-deg", default=5.0, show_default=True, metavar="DEG", help="rms random tilt about each tangent.")
 @click.option("--failing", default=3, show_default=True, metavar="M", help="Most sensors that fail at once.")
@@ -44,6 +47,8 @@ def placement(
     \b
     Example: layout placement configs/readme.toml
     """
+    if layout is not None and click.get_current_context().get_parameter_source("rank") != ParameterSource.DEFAULT:
+        raise click.UsageError("One of --rank and --layout can be given, not both.")
     with printing.progress(PLACEMENT) as progress:
         progress("reading the brief")
         from layout.brief.parse import load_brief

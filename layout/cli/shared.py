@@ -18,6 +18,7 @@ if TYPE_CHECKING:
     from rich.console import Console
 
 RUNS = Path("results") / "runs"
+ABOVE_ZERO = click.FloatRange(min=0, min_open=True)
 
 
 class OneSentence(click.ClickException):

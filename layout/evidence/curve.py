@@ -7,12 +7,14 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
+from layout.engine.clash import clashing_rules
 from layout.engine.feasible import Feasible
 from layout.engine.goal import Goal
 from layout.engine.rules import Rule
 from layout.engine.search import exchange, greedy, improves
 from layout.errors import InfeasibleError
 
+IN_ALL = "sensors in all"
 CLEAR = 0.01  # a knee stands out from the chord by at least this share of the curve's height
 
 
@@ -42,18 +44,21 @@ def of_count(feasible: Feasible, count: int) -> Feasible:
     Of one group, more than its own count may be asked for; of several, each keeps its count as the most and the mix is
     free. Raises InfeasibleError where no layout of so many sensors keeps the rules.
     """
+    if len(feasible.counts) == 1:
+        asked = {"counts": np.array([count]), "least": np.array([count])}
+    else:
+        members = np.arange(feasible.n_candidates)
+        whole = Rule(IN_ALL, members, feasible.sensors, low=count, high=count)
+        asked = {"least": np.zeros_like(feasible.counts), "rules": (*feasible.rules, whole)}
     try:
-        if len(feasible.counts) == 1:
-            rules = replace(feasible, counts=np.array([count]), least=np.array([count]))
-        else:
-            members = np.arange(feasible.n_candidates)
-            whole = Rule("sensors in all", members, feasible.sensors, low=count, high=count)
-            rules = replace(feasible, least=np.zeros_like(feasible.counts), rules=(*feasible.rules, whole))
+        rules = replace(feasible, **asked)
         rules.any_set(np.zeros(rules.n_candidates))
     except InfeasibleError:
+        names = clashing_rules(replace(feasible, checked=False, **asked))
+        listed = ", ".join(name for name in names if name != IN_ALL)
         raise InfeasibleError(
             f"--counts: must be numbers of sensors that the brief's other rules allow, but no layout of {count} keeps "
-            "them all"
+            f"them all{f' (in the way: {listed})' if listed else ''}"
         ) from None
     return rules
 

@@ -228,7 +228,9 @@ def print_assessment(found: Assessment, console: Console) -> None:
         cells = [str(len(one.names)), fixed(one.value, 3), fixed(one.best, 3, "-"), bound, *shares]
         table.add_row(Text(shortened(one.name, 60)), *cells)
     console.print(table)
-    for one in found.ceilings:
+    last = found.ceilings[-1]
+    # The first options of all sites are all there is where a site has one option.
+    for one in (one for one in found.ceilings if one is last or one.channels != last.channels):
         say(console, f"Ceiling: {one.name}, {one.channels} channels: {fixed(one.value, 3)} {unit}")
     for one in found.layouts:
         for note in one.notes:

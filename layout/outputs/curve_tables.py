@@ -235,6 +235,11 @@ def print_curve(curve: Curve, console: Console) -> None:
             fixed(gain, 3, "-"),
         )
     console.print(table)
+    say(
+        console,
+        "equals even: how many sensors an even spread needs to do as well; next buys: what the best single sensor more "
+        "improves the value by, counts and money aside.",
+    )
     for sentence in curve_sentences(curve):
         say(console, sentence)
     for warning in curve.warnings:
@@ -245,7 +250,7 @@ def print_curve(curve: Curve, console: Console) -> None:
 
 def curve_sentences(curve: Curve) -> tuple[str, ...]:
     """Knee, ceiling and where the curve comes near it, in words."""
-    thing = "sensors" if curve.by == "count" else "budget"
+    thing = "numbers of sensors" if curve.by == "count" else "budgets"
     said = []
     if curve.knee is None:
         said.append("No knee: no point stands out from the line between the first and the last.")
@@ -258,11 +263,11 @@ def curve_sentences(curve: Curve) -> tuple[str, ...]:
     reached = []
     for wanted in SHARES:
         place = first_to_reach(shares, wanted)
-        where = "not by these" if place is None else f"from {_spent(curve, curve.points[place])}"
+        where = "by none" if place is None else f"from {_spent(curve, curve.points[place])}"
         reached.append(f"{wanted:g} % {where}")
     said.append(
         f"Ceiling: all candidates at once ({curve.ceiling_channels} channels) give {fixed(curve.ceiling, 3)} "
-        f"{curve.unit}; of the {thing} tried, {', '.join(reached)}."
+        f"{curve.unit}; share reached by the {thing} tried: {', '.join(reached)}."
     )
     return tuple(said)
 

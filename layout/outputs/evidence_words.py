@@ -32,7 +32,7 @@ def _room(placement: Placement) -> str:
     drop = f"before the value {moves} by {LEVELS[LEVEL] / PERCENT:g} %"
     if not np.isfinite(worst).any():
         tried = min(one.slide.tried for one in placement.sensors)
-        return f"Room: any one sensor may be {tried / MM:.0f} mm off along the scalp {drop}."
+        return f"Room: any one sensor may be off by {tried / MM:.0f} mm along the scalp, the farthest tried, {drop}."
     least = placement.sensors[int(worst.argmin())]
     return (
         f"Room: one sensor may be off by {fixed(worst.min() / MM, 1)} mm along the scalp (number {least.number}, the "

@@ -260,7 +260,7 @@ def print_placement(found: Placement, console: Console) -> None:
 def case_text(one: LossRow) -> str:
     """A loss's case in words."""
     if one.what == "failures":
-        return f"{one.failing} of all {'fails' if one.failing == 1 else 'fail'}"
+        return "any 1 fails" if one.failing == 1 else f"any {one.failing} fail"
     parts = [f"{fixed(one.shift / MM, 1)} mm"] if one.shift else []
     parts += [f"{fixed(one.tilt / DEGREE, 1)}°"] if one.tilt else []
     return f"all off by {' and '.join(parts)} rms"

@@ -134,8 +134,9 @@ def print_simulation(result: Simulation, console: Console) -> None:
     console.print(_spreads(result.spreads))
     say(
         console,
-        f"bound: {result.bound}, rms. ratio: rms of each error over its own bound, ± half its 95 % interval. ABOVE: "
-        "more than 10 % over it, or fits that end elsewhere; below: bounds larger than the brain leaves room for.",
+        f"bound: {result.bound}, rms. ratio: rms of each error over its own bound, ± half its 95 % interval. follows: "
+        "within 10 %, as far as so many fits can tell; ABOVE: more than 10 % over it, or fits that end elsewhere; "
+        "below: bounds larger than the brain leaves room for; crosses: near it only on the way from above to below.",
     )
     for note in result.notes:
         say(console, f"- {note}")

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import time
 from collections.abc import Callable, Collection
 from dataclasses import replace
 
@@ -36,7 +35,7 @@ class Board:
                 self._line_up(order, sources.get(order.cell.amount))
         lined_up = {one.key for one in self._ready}
         self._ready += [one for one in sources.values() if one.key in self._waiting and one.key not in lined_up]
-        self._begun, self._run, self._all = time.monotonic(), 0, self._open()
+        self._run, self._all = 0, self._open()
 
     def _line_up(self, order: Order, source: Order | None) -> None:
         """Ready, or behind the order that finds the layout designed for the brief where that is not known yet."""
@@ -90,12 +89,7 @@ class Board:
 
     def say(self, at_work: int) -> None:
         """How far the run is."""
-        left = self._all - self._run
-        text = f"{self._run} of {self._all} cells done, {at_work} at work"
-        if self._run:
-            passed = time.monotonic() - self._begun
-            text += f", about {_duration(passed / self._run * left)} left"
-        self._progress(text)
+        self._progress(f"{self._run} of {self._all} cells done, {at_work} at work")
 
 
 def _sources(orders: tuple[Order, ...]) -> dict[float | None, Order]:
@@ -125,9 +119,3 @@ def _shared(one: tuple[object, ...], other: tuple[object, ...]) -> int:
         if mine != its:
             return place
     return len(one)
-
-
-def _duration(seconds: float) -> str:
-    if seconds < 90:
-        return f"{seconds:.0f} s"
-    return f"{seconds / 60:.0f} min" if seconds < 5400 else f"{seconds / 3600:.1f} h"
