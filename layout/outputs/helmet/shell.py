@@ -30,7 +30,7 @@ READABLE = 6 * MM  # of room in front of a number are enough
 NOTCH = (3 * MM, 2 * MM)  # width and depth of the notch in a collar's top on the side of x
 DIGIT, RAISED, SMALLEST_DIGIT = 6 * MM, 0.6 * MM, 3 * MM  # height of the number on a collar, how far it stands out
 _EAR_BACK, _BACK = 0.35, 0.85  # -sin(azimuth) between which the rim comes down behind the ears
-_SAG = 0.13 * MM  # flat facets lie so much lower in their middle: both sides are raised by it
+_SLACK = 0.03 * MM  # both sides are raised by so much: a facet is measured in its middle and on its edges only
 _CLIMB = 0.7  # slope of the rim up from a sensor that pulls it down
 _AROUND, _UP, _BELOW = 120, 36, 6  # directions around, from the top to the rim, and below it
 _SKIRT, _LOWEST = np.radians(25), np.radians(-85)
@@ -169,25 +169,49 @@ def _dome(moulded: Moulded, rim: np.ndarray, room: float) -> tuple[Mesh, Mesh]:
     top = np.array([[0.0, 0.0, 1.0]])
     wall = np.concatenate([top, spherical(_azimuths(), elevation).reshape(-1, 3)])
     skirt = spherical(_azimuths(), below).reshape(-1, 3)
-    inner, outer = moulded.envelope.radii(wall, (room + _SAG, room + _SAG + WALL)).T
-    under = moulded.envelope.radii(skirt, (room + _SAG,))[:, 0]
-    dome = moulded.centre + wall * outer[:, None]
-    hollow = moulded.centre + np.concatenate([wall, skirt]) * np.concatenate([inner, under])[:, None]
+    nearest = room + _SLACK
+    inner, outer = moulded.envelope.radii(wall, (nearest, nearest + WALL)).T
+    under = moulded.envelope.radii(skirt, (nearest,))[:, 0]
+    rays, radii = np.concatenate([wall, skirt]), np.concatenate([inner, under])
+    rise = _rise(moulded.envelope, rays, radii, _facets(_UP + _BELOW), nearest)
+    dome = moulded.centre + wall * (outer + rise[: len(wall)])[:, None]
+    hollow = moulded.centre + rays * (radii + rise)[:, None]
     return _cone(dome, _UP, moulded.centre), _cone(hollow, _UP + _BELOW, moulded.centre)
+
+
+def _rise(envelope: Envelope, rays: np.ndarray, radii: np.ndarray, facets: np.ndarray, distance: float) -> np.ndarray:
+    """How far corners (n,) must go out along their rays (n, 3), so that no facet is nearer to the scalp than `distance`
+    at its middle or at the middle of an edge: flat facets cut the corners of what stands out between the rays.
+    """
+    corners = rays * radii[:, None]
+    edges = np.unique(np.sort(facets[:, [[0, 1], [1, 2], [2, 0]]].reshape(-1, 2), axis=1), axis=0)
+    rise = np.zeros(len(radii))
+    for parts in (edges, facets):
+        middle = corners[parts].mean(axis=1)
+        reach = np.linalg.norm(middle, axis=1)
+        lacking = envelope.radii(middle / reach[:, None], (distance,))[:, 0] - reach
+        np.maximum.at(rise, parts.ravel(), np.repeat(lacking, parts.shape[1]))
+    return rise
 
 
 def _cone(points: np.ndarray, rows: int, apex: np.ndarray) -> Mesh:
     """A closed mesh from a top point and `rows` rings of points below it, the last ring closed towards the apex."""
     here = np.arange(_AROUND)
+    last = 1 + (rows - 1) * _AROUND
+    under = np.column_stack([last + here, np.full(_AROUND, len(points)), last + (here + 1) % _AROUND])
+    return np.vstack([points, apex]), np.concatenate([_facets(rows), under])
+
+
+def _facets(rows: int) -> np.ndarray:
+    """Triangles (m, 3) between a top point and `rows` rings of points below it."""
+    here = np.arange(_AROUND)
     there = (here + 1) % _AROUND
-    faces = [np.column_stack([np.zeros(_AROUND, int), 1 + here, 1 + there])]
+    facets = [np.column_stack([np.zeros(_AROUND, int), 1 + here, 1 + there])]
     for row in range(rows - 1):
         high, low = 1 + row * _AROUND, 1 + (row + 1) * _AROUND
-        faces.append(np.column_stack([high + here, low + here, low + there]))
-        faces.append(np.column_stack([high + here, low + there, high + there]))
-    last = 1 + (rows - 1) * _AROUND
-    faces.append(np.column_stack([last + here, np.full(_AROUND, len(points)), last + there]))
-    return np.vstack([points, apex]), np.concatenate(faces)
+        facets.append(np.column_stack([high + here, low + here, low + there]))
+        facets.append(np.column_stack([high + here, low + there, high + there]))
+    return np.concatenate(facets)
 
 
 def _upright(pose: np.ndarray, middle: tuple[float, float], section: np.ndarray, low: float, high: float) -> Mesh:
