@@ -74,7 +74,9 @@ def _read_head(text: str, before: Answers) -> Answers:
     if said in NAMED_SIZES:
         return replace(before, head=f'size = "{said}"')
     least, most = CIRCUMFERENCES
-    size = _number(said.removesuffix("mm").strip())
+    per_unit = 10 if said.endswith("cm") else 1
+    size = _number(said.removesuffix("mm").removesuffix("cm").strip())
+    size = None if size is None else per_unit * size
     if size is None or not least <= size <= most:
         rule = f'"{AVERAGE}", a circumference from {least} to {most} mm, or a size such as "female 5th percentile"'
         raise _refused("The head", rule, text)
@@ -88,7 +90,7 @@ def _head_said(before: Answers) -> str:
 def _read_regions(text: str, before: Answers) -> Answers:
     parts = [part.strip() for part in text.split(";") if part.strip()]
     if not 1 <= len(parts) <= MOST_REGIONS:
-        raise _refused("The regions", f"1 to {MOST_REGIONS}, parted by semicolons", text)
+        raise _refused("The regions", f"1 to {MOST_REGIONS}, separated by semicolons", text)
     places = tuple(_place(part) for part in parts)
     names = [place.name for place in places]
     for name in names:
@@ -153,7 +155,7 @@ def _read_budget(text: str, before: Answers) -> Answers:
         return replace(before, budget=None, price=None)
     total = _number(said)
     if total is None or not 0 < total <= LARGEST_SUM:
-        raise _refused("The budget", f'"{NO_BUDGET}" or a sum over 0 and up to {LARGEST_SUM:.0f}', text)
+        raise _refused("The budget", f'"{NO_BUDGET}" or a sum over 0 and up to {LARGEST_SUM:.0f} (no currency)', text)
     return replace(before, budget=total)
 
 
@@ -202,14 +204,14 @@ QUESTIONS = (
     Question(
         words=lambda before: "Which head",
         hint=lambda before: (
-            f'{AVERAGE}; a circumference in mm, such as 560; or a size such as "female 5th percentile" or "male 95th '
-            'percentile"'
+            f'{AVERAGE}; a circumference, such as 560 mm or 56 cm; or a size such as "female 5th percentile" or '
+            '"male 95th percentile"'
         ),
         usual=_head_said,
         read=_read_head,
     ),
     Question(
-        words=lambda before: "Which regions of the cortex, parted by semicolons",
+        words=lambda before: "Which regions of the cortex, separated by semicolons",
         hint=lambda before: (
             f"places: left or right, followed by {', '.join(PAIRED)}; or {', '.join(MIDLINE)}; positions, such as C3: "
             "the cortex under it; coordinates x y z in mm of MNI152, such as -38 -24 56. Places are rough: your own "
@@ -220,7 +222,9 @@ QUESTIONS = (
     ),
     Question(
         words=lambda before: "Where may sensors sit",
-        hint=lambda before: ", ".join(WHERE),
+        hint=lambda before: (
+            f"{', '.join(WHERE)}; zones such as the forehead can be kept free in the brief, with keep_out"
+        ),
         usual=lambda before: before.where,
         read=_read_where,
     ),

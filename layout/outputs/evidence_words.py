@@ -35,8 +35,8 @@ def _room(placement: Placement) -> str:
         return f"Room: any one sensor may be off by {tried / MM:.0f} mm along the scalp, the farthest tried, {drop}."
     least = placement.sensors[int(worst.argmin())]
     return (
-        f"Room: one sensor may be off by {fixed(worst.min() / MM, 1)} mm along the scalp (number {least.number}, the "
-        f"most exact) or more (all others), in the worst direction, {drop}."
+        f"Room: one sensor may be off by {fixed(worst.min() / MM, 1)} mm along the scalp (number {least.number}, "
+        f"which must sit most exactly) or more (all others), in the worst direction, {drop}."
     )
 
 

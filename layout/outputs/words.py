@@ -105,7 +105,8 @@ def figure_text(figure: Figure) -> str:
 
 def nearest_text(row: SensorRow) -> str:
     """The nearest standard position and how far it is from the sensor's place on the scalp."""
-    return f"{one_line(row.nearest_name)} {fixed(row.nearest_offset / MM, 1)} mm"
+    offset = fixed(row.nearest_offset / MM, 1)
+    return f"{one_line(row.nearest_name)} " + ("on the spot" if offset == "0.0" else f"{offset} mm")
 
 
 def meets_housings(result: DesignResult) -> bool:

@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 
 from layout.anatomy.head import Head
-from layout.sensing.axis_options import axis_options
+from layout.sensing.axis_options import axis_options, quarter_turned
 from layout.sensing.candidates import Candidates, Sites
 from layout.sensing.cliques import clique_cover
 from layout.sensing.exclusions import Exclusions
@@ -35,7 +35,9 @@ def assemble(
                 taken.add(names[-1])
         kind.append(np.full(n * per_spot, index))
         site.append(np.repeat(part.site, per_spot))
-        pose.append(np.repeat(part.poses, per_spot, axis=0))
+        turned = np.tile([option.turned for option in options], n)
+        stands = np.repeat(part.poses, per_spot, axis=0)
+        pose.append(np.where(turned[:, None, None], quarter_turned(stands), stands))
         spot.append(np.repeat(n_spots + np.arange(n), per_spot))
         free_axes = getattr(part.entry, "free_axes", 0)
         limit = getattr(part.entry, "tilt_limit", None)

@@ -23,6 +23,7 @@ _GRADIENTS = {
     "one_tangent": (("gradient1", (1,)), ("gradient2", (2,))),
     "both_tangents": (("gradients", (1, 2)),),
 }
+TURNED = ("tangents", "two_axis", "one_tangent")  # their second choice is the first with the housing turned
 
 
 @dataclass(frozen=True)
@@ -31,13 +32,26 @@ class AxisOption:
 
     axes (m, 3): components of each channel's sensitive axis along (normal, tangent 1, tangent 2), zeros for electrodes;
     baselines (m, 3) [m]: the same for gradiometers' baselines, zeros elsewhere. mirror: number of the option that a
-    mirror in the median plane makes of it, -1 where there is none.
+    mirror in the median plane makes of it, -1 where there is none. turned: whether it is another option of the same
+    sensor, its housing turned by a quarter about the normal, so that tangent 2 takes the place of tangent 1.
     """
 
     name: str
     axes: np.ndarray
     baselines: np.ndarray
     mirror: int
+    turned: bool = False
+
+
+def can_be_turned(entry: StockBrief) -> bool:
+    """Whether any choice turns the housing."""
+    return any(option.turned for option in axis_options(entry))
+
+
+def quarter_turned(frames: np.ndarray) -> np.ndarray:
+    """Housing poses (n, 4, 4) turned about their own z, so that x goes where y was."""
+    turn = np.array([[0.0, -1.0, 0.0, 0.0], [1.0, 0.0, 0.0, 0.0], [0.0, 0.0, 1.0, 0.0], [0.0, 0.0, 0.0, 1.0]])
+    return frames @ turn
 
 
 def axis_options(entry: StockBrief) -> tuple[AxisOption, ...]:
@@ -51,7 +65,9 @@ def axis_options(entry: StockBrief) -> tuple[AxisOption, ...]:
         return _gradiometer_options(entry)
     if isinstance(entry.axes, str):
         return tuple(
-            AxisOption(name, np.eye(3)[list(rows)], np.zeros((len(rows), 3)), number)
+            AxisOption(
+                name, np.eye(3)[list(rows)], np.zeros((len(rows), 3)), number, entry.axes in TURNED and 2 in rows
+            )
             for number, (name, rows) in enumerate(_AXES[entry.axes])
         )
     axes = np.array(entry.axes)
@@ -69,6 +85,12 @@ def _gradiometer_options(entry: StockBrief) -> tuple[AxisOption, ...]:
     if entry.shape == "axial":
         return (AxisOption("axial", normal[None], -entry.baseline * normal[None], 0),)
     return tuple(
-        AxisOption(name, np.tile(normal, (len(rows), 1)), entry.baseline * np.eye(3)[list(rows)], number)
+        AxisOption(
+            name,
+            np.tile(normal, (len(rows), 1)),
+            entry.baseline * np.eye(3)[list(rows)],
+            number,
+            entry.gradients in TURNED and 2 in rows,
+        )
         for number, (name, rows) in enumerate(_GRADIENTS[entry.gradients])
     )

@@ -9,6 +9,7 @@ from scipy.spatial import cKDTree
 from scipy.spatial.distance import cdist
 
 from layout.brief.objects_stock import HOUSED
+from layout.sensing.axis_options import can_be_turned, quarter_turned
 from layout.sensing.candidates import Sites
 from layout.sensing.footprints import footprints_overlap, near_pairs
 from layout.sensing.overlap import boxes_overlap
@@ -60,11 +61,34 @@ def spot_exclusions(spots: list[Spots], sites: Sites) -> Exclusions:
         faces = np.concatenate([part.faces for part in spots])
         frames = np.concatenate([part.frames for part in spots])
         pairs = near_pairs(kind, footprints, clearances, faces)
-        pairs = pairs[footprints_overlap(pairs, kind, footprints, clearances, faces, frames)]
+        turned = np.stack([frames[:, 0], frames[:, 2], -frames[:, 1]], axis=1)
+        turned = np.where(_turnable(spots)[:, None, None], turned, frames)
+        twice = [np.concatenate([one, one]) for one in (kind, faces)]
+        meet = np.zeros(len(pairs), dtype=bool)
+        for shift in _stances(spots, len(kind)):
+            both = footprints_overlap(
+                pairs + shift, twice[0], footprints, clearances, twice[1], np.concatenate([frames, turned])
+            )
+            meet |= both
+        pairs = pairs[meet]
         overlap[pairs[:, 0], pairs[:, 1]] = overlap[pairs[:, 1], pairs[:, 0]] = True
     for table in (same, near):
         np.fill_diagonal(table, False)
     return Exclusions(same, near, overlap)
+
+
+def _turnable(spots: list[Spots]) -> np.ndarray:
+    """Whether the choice of axes may turn the housing at each spot (n_spots,)."""
+    return np.repeat([can_be_turned(part.entry) for part in spots], [len(part.site) for part in spots])
+
+
+def _stances(spots: list[Spots], n: int) -> list[np.ndarray]:
+    """What to add to pairs of spots (m, 2) for every way that two housings can stand beside each other, where the n
+    spots are followed by the same as they stand when turned.
+    """
+    if not _turnable(spots).any():
+        return [np.array([0, 0])]
+    return [np.array([first, second]) for first in (0, n) for second in (0, n)]
 
 
 def housing_notes(spots: list[Spots], sites: Sites, excluded: np.ndarray) -> list[str]:
@@ -83,7 +107,12 @@ def housing_notes(spots: list[Spots], sites: Sites, excluded: np.ndarray) -> lis
     if len(pairs) == 0:
         return []
     a, b = pairs.T
-    pairs = pairs[boxes_overlap(frames[a], sizes[a], frames[b], sizes[b])]
+    turned = np.where(_turnable(spots)[:, None, None], quarter_turned(frames), frames)
+    stands = np.concatenate([frames, turned])
+    meet = np.zeros(len(pairs), dtype=bool)
+    for shift in _stances(spots, len(frames)):
+        meet |= boxes_overlap(stands[a + shift[0]], sizes[a], stands[b + shift[1]], sizes[b])
+    pairs = pairs[meet]
     if len(pairs) == 0:
         return []
     sensors = np.concatenate([part.sensors for part in spots])

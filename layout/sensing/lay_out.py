@@ -164,8 +164,11 @@ def _usable_places(
             f"{len(left.names)} of {len(places.names)}"
             f"{f' (lost to {losses})' if losses else ''}, but {entry.count} was given"
         )
-    if entry.kind == "electrode" and entry.reference != "any":
-        resolve_name(entry.reference, left.names, f"{key}.reference")
+    named = entry.kind == "electrode" and entry.reference != "any"
+    if named and resolve_name(entry.reference, places.names, f"{key}.reference") not in left.names:
+        raise BriefError(
+            f"{key}.reference: must name a site that zones and forbid allow, but {entry.reference!r} was given"
+        )
     said = f"{entry.name}: {len(left.names)} of {len(places.names)} sites allowed"
     notes = [said + (f" (taken by {losses}; a site may be counted twice)" if losses else "")]
     return left, notes + [note for note in places.notes if "A1" not in note or {"A1", "A2"} & set(left.names)]

@@ -13,7 +13,7 @@ from layout.sensing.candidates import Candidates
 
 def near_names(name: str, known: list[str] | tuple[str, ...]) -> str:
     """The end of an error message: the known names that look like `name`, or nothing."""
-    near = difflib.get_close_matches(name, known, n=4, cutoff=0.4)
+    near = difflib.get_close_matches(name, dict.fromkeys(known), n=4, cutoff=0.4)
     return f"; near names: {', '.join(near)}" if near else ""
 
 

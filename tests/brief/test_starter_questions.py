@@ -56,6 +56,7 @@ def test_every_combination_of_answers_parses(load_text, kind):
 
 def test_sizes_of_the_head_arrive(load_text):
     assert load_text(brief_text(answered("cap", {0: "560.5"}))).head.size.circumference == pytest.approx(0.5605)
+    assert load_text(brief_text(answered("cap", {0: "54.5 cm"}))).head.size.circumference == pytest.approx(0.545)
     for name in NAMED_SIZES:
         length, breadth = NAMED_SIZES[name]
         size = load_text(brief_text(answered("cap", {0: name.upper()}))).head.size
@@ -82,12 +83,13 @@ def test_any_text_is_taken_or_refused_in_one_sentence(kind, number, text):
     ("number", "text", "said"),
     [
         (0, "12", r'The head must be "average", a circumference from 440 to 680 mm.*"12" was given\.$'),
+        (0, "43 cm", "a circumference from 440 to 680 mm"),
         (0, "nan", "The head must be"),
         (1, "nowhere", r'A region must be a place of the list.*"nowhere" was given\.$'),
         (1, "1 2", "A region must be"),
         (1, "0 0 300", "from -200 to 200"),
         (1, "C3; c3", r'named once each, but "under C3" was given'),
-        (1, " ; ", "1 to 12, parted by semicolons"),
+        (1, " ; ", "1 to 12, separated by semicolons"),
         (2, "nose", '"whole scalp", "forehead and ears", "top" or "back", but "nose"'),
         (3, "1", "The number of electrodes must be a whole number from 2 to"),
         (3, "1e3", "a whole number"),

@@ -8,12 +8,12 @@ from cap_cases import cap_pattern, cap_result
 from layout.anatomy.build import build_head
 from layout.anatomy.geodesics import geodesic_distances
 from layout.anatomy.head import Surface
-from layout.anatomy.positions import standard_positions
+from layout.anatomy.positions import family_names, standard_positions
 from layout.anatomy.scalp_points import normals_at, project
 from layout.anatomy.star_surface import icosphere
 from layout.brief.objects import HeadBrief
 from layout.brief.objects_head import HeadSizeBrief
-from layout.outputs.cap.gores import Holes, cut_cap, gore_names
+from layout.outputs.cap.gores import COUNTS, SEAM_NAMES, Holes, cut_cap, gore_names
 from layout.outputs.cap.holes import _across
 from layout.outputs.cap.mesh import boundary_loop, cut, halved
 from layout.outputs.cap.rim import CLEAR, find_rim
@@ -83,6 +83,16 @@ def test_seams_are_the_same_line_and_nearly_as_long_on_both_papers():
         assert seam.length == pytest.approx(np.linalg.norm(np.diff(line, axis=0), axis=1).sum(), rel=1e-12)
         assert line[0, 1] > line[-1, 1]
         assert all(np.isin(seam.path, cap.gores[number].vertices).all() for number in seam.gores)
+
+
+def test_no_notch_reads_as_an_electrode():
+    pattern = cap_pattern()
+    labels = {notch.label.upper() for piece in pattern.pieces for notch in piece.notches}
+    electrodes = {name.upper() for name in family_names("10-5")} | {"M1", "M2"}
+    assert len(labels) > 20
+    assert not labels & electrodes
+    assert len(set(SEAM_NAMES)) == len(SEAM_NAMES) >= max(COUNTS) - 1
+    assert not {f"{name}{k}" for name in SEAM_NAMES for k in range(1, 11)} & electrodes
 
 
 def test_front_is_up_and_right_is_right_on_every_gore():

@@ -3,17 +3,19 @@
 import csv
 import dataclasses
 import io
+import itertools
 import json
 
 import numpy as np
 import pytest
-from helmet_cases import angle_between, helmet_case, parts_of, slot_case
+from helmet_cases import TARGET, THREE, angle_between, helmet_case, parts_of, slot_case
 from hypothesis import example, given, settings
 from hypothesis import strategies as st
+from studies import BAND, SPHERE, study_of
 
 from layout.outputs.helmet.columns import POSES
 from layout.outputs.helmet.poses import helmet_poses_csv, helmet_poses_json, pose_in_mm
-from layout.outputs.helmet.sensors import HousedSensor
+from layout.outputs.helmet.sensors import HousedSensor, housed_sensors
 from layout.sensing.housing import Rest, poses
 
 PLACE = 0.01  # mm
@@ -166,7 +168,34 @@ def test_same_result_same_text_whoever_makes_the_parts():
 
 
 def test_sensors_whose_axes_lie_differently_are_warned_of():
-    cautions = json.loads(helmet_poses_json(helmet_case(), helmet_case().layouts[0], *parts_of(helmet_case)))[
-        "cautions"
-    ]
-    assert [text.split(":")[0] for text in cautions if "axes_in_housing" in text] == ["cell"]
+    content = json.loads(helmet_poses_json(helmet_case(), helmet_case().layouts[0], *parts_of(helmet_case)))
+    told = [text for text in content["cautions"] if "axes_in_housing" in text]
+    assert [text.split(":")[0] for text in told] == ["cell"]
+    lying = {}
+    for one in content["sensors"]:
+        if one["kind"] == "cell":
+            lying.setdefault(str(np.abs(np.round(one["axes_in_housing"], 3))), []).append(str(one["number"]))
+    assert len(lying) > 1
+    assert "alike within " + "; ".join(", ".join(numbers) for numbers in lying.values()) + ")" in told[0]
+
+
+def test_a_two_axis_sensor_is_turned_with_its_axes():
+    """One sensor that can only be turned: its axes lie in its housing as they always do, whatever the choice."""
+    result = slot_case()
+    first, second = housed_sensors(result, result.layouts[0])
+    assert (first.row.axis_name, second.row.axis_name) == ("normal+tangent1", "normal+tangent2")
+    np.testing.assert_allclose(first.axes, [[0, 0, 1], [0, 1, 0]], atol=1e-9)
+    np.testing.assert_allclose(second.axes, first.axes, atol=1e-9)
+    assert not any("lie alike" in one for one in json.loads(helmet_poses_json(result, result.layouts[0]))["cautions"])
+
+
+def test_housings_that_would_meet_only_when_turned_exclude_each_other():
+    """Faces of 20 x 10 mm some 14 mm apart: across they may be free of each other, not once one of them is turned."""
+    excluded = {}
+    for axes in ("normal", "two_axis"):
+        stock = THREE.replace('"any_of_three"', f'"{axes}"').replace("[12, 16, 24]", "[20, 10, 24]")
+        stock = stock.replace("count = 4", "count = 2").replace('family = "10-20"', "grid_mm = 14")
+        study = study_of(SPHERE, TARGET, stock.replace("cell_mm", 'footprint = "housing"\ncell_mm'), BAND)
+        sites = [np.unique(study.candidates.site[clique]) for clique in study.candidates.cliques]
+        excluded[axes] = {pair for one in sites for pair in itertools.combinations(one.tolist(), 2)}
+    assert excluded["two_axis"] > excluded["normal"]

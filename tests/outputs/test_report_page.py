@@ -172,6 +172,10 @@ def test_a_sensor_s_card_and_row_say_the_same(html, evident):
     assert f"{row.worth:.3f} bits ({100 * row.worth / evident.layouts[0].value:.1f} % of the value)" in card
     assert f"{1000 * sensor.slide.worst[1]:.1f} mm along the scalp (worst to the back)" not in card  # 270 is the right
     assert f"{1000 * sensor.slide.worst[1]:.1f} mm along the scalp (worst to the right), 17° of tilt, 6.0 mm" in card
+    near = (
+        f"{1000 * sensor.slide.worst[0]:.1f} mm along the scalp (worst to the front left), 6° of tilt, 2.0 mm of lift"
+    )
+    assert card.index("1 % worse at") < card.index(near) < card.index("5 % worse at")
     name, value = sensor.substitutes[1]
     assert f"{100 * value / evident.layouts[0].value:.1f} %" in card
     text = Page(html).text

@@ -184,7 +184,7 @@ def test_forbidden_sites_and_old_names(head, standard):
         ({}, {"keep": ("Cz",), "forbid": ("Cz",)}, BriefError, "places.keep: .*forbid allow, but 'Cz'"),
         ({}, {"keep": ("A1",)}, BriefError, "places.keep: .*zones"),
         ({"reference": "M1"}, {}, BriefError, r"stock\[0\].reference: .*'M1'"),
-        ({"reference": "A1"}, {}, BriefError, r"stock\[0\].reference: .*'A1'"),
+        ({"reference": "A1"}, {}, BriefError, r"stock\[0\].reference: .*zones and forbid allow, but 'A1'"),
         ({"keep_out": ("nose",)}, {}, BriefError, r"stock\[0\].keep_out: zone must be one of .*'nose'"),
         (
             {"only_in": ("patch",)},

@@ -14,6 +14,7 @@ from layout.anatomy.scalp_points import project
 from layout.outputs.cap.flatten import Flat, flatten
 from layout.outputs.cap.mesh import boundary_loop, cut, halved, largest_part
 
+SEAM_NAMES = "BDGHJKQS"  # with a notch's number behind them none reads as an electrode, such as A1, C3, F4
 COUNTS = (7, 9)  # gores tried, in this order; 5 were 7 to 9 % off on the average head
 LIMIT = 0.05  # the fewest gores are taken whose lengths are right within this but for 0.2 % of the area
 _BEYOND = 0.002
@@ -130,7 +131,7 @@ def cut_cap(scalp: Surface, landmarks: Landmarks, above: Above, holes: Holes, co
     gores = [_gore(name, vertices, faces[gore_of_face == number]) for number, name in enumerate(gore_names(count))]
     paths = [_shared_path(vertices, gores[k], gores[k + 1]) for k in range(count - 1)]
     gores = _with_even_seams(vertices, gores, paths)
-    seams = [_seam(chr(ord("A") + k), vertices, gores, k, path) for k, path in enumerate(paths)]
+    seams = [_seam(SEAM_NAMES[k], vertices, gores, k, path) for k, path in enumerate(paths)]
     return Cap(Surface(vertices, faces), gore_of_face, tuple(gores), tuple(seams), clearance)
 
 

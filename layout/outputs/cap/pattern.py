@@ -107,7 +107,7 @@ def _lines(head: Head, rim: Rim, cap: Cap):
     lines, ends = [], []
     for name, start, end, names in (
         ("midline", nas, inion, ("nasion", "inion")),
-        ("ear line", lpa, rpa, ("LPA", "RPA")),
+        ("ear line", lpa, rpa, ("ear", "ear")),
     ):
         contour = three_point_contour(head.scalp, start, cz, end)
         steps = even_steps(contour.end_length)

@@ -64,13 +64,15 @@ def weaknesses(result: DesignResult, pattern: Pattern) -> tuple[str, ...]:
     notes = [
         strain_sentence(pattern),
         seam_sentence(pattern),
-        f"Rim: {fixed(pattern.rim_length / MM, 0)} mm round the head on the skin. No ease and no stretch are built in: "
+        f"Rim: {fixed(pattern.rim_length / MM, 0)} mm along the skin, dips for low sensors included: not the "
+        "circumference that is measured level. No ease and no stretch are built in: "
         "for cloth that stretches make it smaller by what your cloth gives; chin strap and ear openings are yours.",
     ]
     if any(shape.assumed for shape in pattern.shapes):
+        whose = "the electrodes" if all(shape.assumed for shape in pattern.shapes) else "some electrodes"
         notes.append(
-            "The brief gives no footprint for some electrodes: their holes are drawn 10 mm wide. Compare with your "
-            "holders before you cut."
+            f"The brief gives no footprint for {whose}: their holes are drawn 10 mm wide. Compare with your holders "
+            "before you cut."
         )
     if pattern.left_out:
         left = ", ".join(f"{row.number} ({one_line(row.site)})" for row in pattern.left_out)

@@ -195,11 +195,16 @@ def _cautions(result: DesignResult, sensors: tuple[HousedSensor, ...], shell: He
             "must be put on tilted, or cut in two and joined on the head."
         )
     for kind in dict.fromkeys(one.row.kind for one in sensors):
-        axes = {np.round(np.abs(one.axes), 4).tobytes() for one in sensors if one.row.kind == kind}
-        if len(axes) > 1:
+        lying: dict[bytes, list[str]] = {}
+        for one in sensors:
+            if one.row.kind == kind:
+                lying.setdefault(np.round(np.abs(one.axes), 4).tobytes(), []).append(str(one.row.number))
+        if len(lying) > 1:
+            groups = "; ".join(", ".join(numbers) for numbers in lying.values())
             cautions.append(
-                f"{one_line(kind)}: the sensitive axes do not lie alike in all housings (axes_in_housing); a sensor "
-                "whose axes are fixed must be turned in its place, and its hole and clash check with it."
+                f"{one_line(kind)}: the sensitive axes do not lie alike in all housings (axes_in_housing; alike within "
+                f"{groups}); a sensor whose axes are fixed must be turned in its place, and its hole, which is not "
+                "turned here, and its clash check with it."
             )
     return cautions
 

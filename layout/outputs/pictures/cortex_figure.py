@@ -157,7 +157,9 @@ def cortex_figure(result: DesignResult, layout: RankedLayout, sheet: Sheet, seen
     _legend(figure, result.regions, columns, known, height)
     if known:
         along = "along the cortex's normal" if result.head.normal_orientation else "averaged over its directions"
-        label = f"signal-to-noise ratio of a dipole of {significant(evidence.probe_moment / NAM, 3)} nAm {along}"
+        label = (
+            f"amplitude signal-to-noise ratio of a dipole of {significant(evidence.probe_moment / NAM, 3)} nAm {along}"
+        )
         _colour_bar(figure, label, top, height)
     return figure
 

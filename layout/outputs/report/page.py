@@ -34,7 +34,7 @@ from layout.outputs.report.charts import (
 )
 from layout.outputs.report.files import files_of, shared_files
 from layout.outputs.report.scene import scene_json, sensitivity_top, sensor_colour
-from layout.outputs.report.sensors import levels, sensor_rows, shown_level
+from layout.outputs.report.sensors import levels, sensor_rows
 from layout.outputs.report.words import NO_CURVE, NO_NOISE, NO_ROOM, limits_of
 from layout.outputs.result import DesignResult
 from layout.outputs.words import (
@@ -112,7 +112,6 @@ def report_html(result: DesignResult, pictures: Sequence[Picture], beside: Seque
         probe_nam=evidence.probe_moment / NAM if evidence is not None else 0.0,
         curve=_curve(evidence.curve) if evidence is not None and evidence.curve is not None else None,
         levels=levels(),
-        shown_level=shown_level(),
         no_room=NO_ROOM,
         no_curve=NO_CURVE,
         no_noise=NO_NOISE,

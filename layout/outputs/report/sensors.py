@@ -15,7 +15,7 @@ from layout.units import DEGREE, MM, PERCENT
 
 COMPASS = ("front", "front left", "left", "back left", "back", "back right", "right", "front right")
 INSTEAD = 3  # substitutes named for each sensor
-SHOWN_LEVEL = 1  # of LEVELS: the drop that the sensor's card names
+SHOWN_LEVELS = (0, 1)  # of LEVELS: the drops that a sensor's card names; at the second many are beyond what was tried
 
 
 def sensor_rows(layout: RankedLayout, placement: Placement | None, unit: str) -> list[dict[str, Any]]:
@@ -27,11 +27,6 @@ def sensor_rows(layout: RankedLayout, placement: Placement | None, unit: str) ->
 def levels() -> list[str]:
     """The drops for which room is given, in per cent."""
     return [f"{level / PERCENT:g}" for level in LEVELS]
-
-
-def shown_level() -> str:
-    """The drop that a sensor's card names, in per cent."""
-    return levels()[SHOWN_LEVEL]
 
 
 def _row(row: SensorRow, placed: PlacedSensor | None, layout: RankedLayout, unit: str) -> dict[str, Any]:
@@ -51,7 +46,7 @@ def _row(row: SensorRow, placed: PlacedSensor | None, layout: RankedLayout, unit
         "worth": fixed(row.worth, 3),
         "worth_text": f"{fixed(row.worth, 3)} {unit} ({fixed(share, 1)} % of the value)",
         "room": None if placed is None else _room_cells(placed),
-        "room_text": "" if placed is None else _room_text(placed),
+        "room_texts": [] if placed is None else [(levels()[at], _room_text(placed, at)) for at in SHOWN_LEVELS],
         "instead": None if placed is None else [_instead(*one, layout) for one in placed.substitutes[:INSTEAD]],
     }
 
@@ -65,14 +60,14 @@ def _room_cells(placed: PlacedSensor) -> list[str]:
     ]
 
 
-def _room_text(placed: PlacedSensor) -> str:
-    """Room at the shown level in words, with the worst direction of a slide."""
+def _room_text(placed: PlacedSensor, at: int) -> str:
+    """Room at one of LEVELS in words, with the worst direction of a slide."""
     slide = placed.slide
-    said = [f"{_within(slide.worst[SHOWN_LEVEL], slide, MM, 1)} mm along the scalp{_towards(slide)}"]
+    said = [f"{_within(slide.worst[at], slide, MM, 1)} mm along the scalp{_towards(slide, at)}"]
     if placed.tilt is not None:
-        said.append(f"{_within(placed.tilt.worst[SHOWN_LEVEL], placed.tilt, DEGREE, 0)}° of tilt")
+        said.append(f"{_within(placed.tilt.worst[at], placed.tilt, DEGREE, 0)}° of tilt")
     if placed.lift is not None:
-        said.append(f"{_within(placed.lift.worst[SHOWN_LEVEL], placed.lift, MM, 1)} mm of lift")
+        said.append(f"{_within(placed.lift.worst[at], placed.lift, MM, 1)} mm of lift")
     return ", ".join(said)
 
 
@@ -80,11 +75,11 @@ def _within(value: float, room: Room, unit: float, digits: int) -> str:
     return fixed(value / unit, digits) if math.isfinite(value) else f">{fixed(room.tried / unit, 0)}"
 
 
-def _towards(room: Room) -> str:
+def _towards(room: Room, at: int) -> str:
     """Where a slide costs most, in eight words of direction; "" where none costs that much."""
-    if not math.isfinite(room.worst[SHOWN_LEVEL]) or not room.toward[SHOWN_LEVEL]:
+    if not math.isfinite(room.worst[at]) or not room.toward[at]:
         return ""
-    return f" (worst to the {COMPASS[round(float(room.toward[SHOWN_LEVEL]) / 45) % 8]})"
+    return f" (worst to the {COMPASS[round(float(room.toward[at]) / 45) % 8]})"
 
 
 def _instead(name: str, value: float, layout: RankedLayout) -> tuple[str, str]:

@@ -9,7 +9,7 @@ from layout.outputs.result import SensorRow
 from layout.outputs.sheet.distances import MARKS, Offset
 from layout.outputs.sheet.page_style import PLAIN, draw_mark, marked_up, style
 from layout.outputs.sheet.rows import Housing, Sheet, Step
-from layout.outputs.sheet.words import room_at
+from layout.outputs.sheet.words import ROOM_PERCENT, room_at
 from layout.units import DEGREE, MM, PERCENT
 
 if TYPE_CHECKING:
@@ -28,7 +28,7 @@ COLUMNS = (
     ("two tapes, mm from", 0.094),
     ("neighbours, no.: mm", 0.078),
     ("check, mm from", 0.096),
-    ("room to err", 0.084),
+    (f"room to err, for {ROOM_PERCENT}", 0.084),
     ("write down", 0.096),
 )
 

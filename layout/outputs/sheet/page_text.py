@@ -41,7 +41,7 @@ NEAR_WORDS = (
 )
 CHECK_WORDS = (
     "<b>Check.</b> After placing, measure from a third landmark and write down what you find. If it is off by more "
-    "than 5 mm, or than the room in the table where that is less, measure again."
+    "than 5 mm, or than the room in the table where that is less (but 2 mm is as much as a tape tells), measure again."
 )
 WRITE_WORDS = (
     "<b>Write down</b> the impedance of each electrode, the field offset of each sensor in a housing, and how far off "
@@ -60,8 +60,9 @@ OFFSET_WORDS = (
     "lead from the standard position to the sensor: its whole length, then its parts."
 )
 ROOM_WORDS = (
-    "<b>Room.</b> How far the sensor may be off, in the worst direction and with all others in place, before the "
-    f"layout's value is worse by {ROOM_PERCENT} under the model; > where it is not within what was tried."
+    "<b>Room.</b> How far the sensor may be off (slide: along the scalp), in the worst direction and with all others "
+    f"in place, before the layout's value is worse by {ROOM_PERCENT} under the model; > where it is not "
+    "within what was tried."
 )
 NO_ROOM_WORDS = "<b>Room.</b> How far a sensor may be off was not computed for this sheet: keep within 5 mm."
 HOUSING_WORDS = (
