@@ -11,6 +11,7 @@ from matplotlib.colors import to_rgb
 from pdfminer.pdftypes import resolve1
 
 from layout.outputs.evidence_result import ChannelNoise, Evidence
+from layout.outputs.pictures import files as files_of
 from layout.outputs.pictures.backdrop import REGION_COLOURS, region_colour
 from layout.outputs.pictures.cortex_figure import (
     PANELS,
@@ -199,9 +200,7 @@ def test_bars_are_the_noise_and_its_shares(examined):
 
 @pytest.mark.slow
 def test_files_of_every_layout(examined, result, drawn, monkeypatch):
-    from layout.outputs import picture_files as module
-
-    monkeypatch.setattr(module, "cortex_pictures", lambda result: [drawn["cortex"]] * len(result.layouts))
+    monkeypatch.setattr(files_of, "cortex_pictures", lambda result: [drawn["cortex"]] * len(result.layouts))
     ((rank, files),) = picture_files(examined)
     assert rank == 1
     assert files == {name: getattr(drawn[name[:-4]], name[-3:]) for name in PICTURE_FILES}
